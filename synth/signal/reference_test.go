@@ -1,0 +1,147 @@
+package signal
+
+import (
+	"encoding/json"
+	"fmt"
+	"math"
+	"os"
+	"path/filepath"
+	"testing"
+
+	"voxelproof/maps"
+)
+
+// The targets are the numerical Bloch simulations of the project's reference
+// tables (made without any closed form; conventions in their README): a subset
+// of rows in ../testdata/reference, and all rows when the tables themselves are
+// beside the project.
+
+// refRow is one row of a reference table, times in ms, angles in degrees.
+type refRow struct {
+	ID, Variant string
+	Tissue      map[string]any
+	Params      map[string]any
+	Info        map[string]any
+	Values      map[string]struct {
+		Bloch json.RawMessage
+		Err   float64
+	}
+}
+
+func (r refRow) num(m map[string]any, key string, otherwise float64) float64 {
+	if v, ok := m[key].(float64); ok {
+		return v
+	}
+	return otherwise
+}
+
+func (r refRow) ms(key string) float64 { return r.num(r.Params, key, 0) / 1e3 }
+func (r refRow) deg(key string, otherwise float64) float64 {
+	return r.num(r.Params, key, otherwise) * math.Pi / 180
+}
+
+func (r refRow) pool() maps.Pool {
+	return maps.Pool{T1: r.num(r.Tissue, "T1", 0) / 1e3, T2: r.num(r.Tissue, "T2", 0) / 1e3, T2Star: r.num(r.Tissue, "T2s", 0) / 1e3}
+}
+
+func (r refRow) readout() Readout {
+	if r.Params["readout"] == "se" {
+		return SpinEcho90
+	}
+	return GradientEcho
+}
+
+func (r refRow) timing() maps.Timing {
+	return maps.Timing{
+		TR: r.ms("TR"), TE: r.ms("TE"), TI: r.ms("TI") + r.ms("TI2"), TI1: r.ms("TI1"), TS: r.ms("TS"),
+		Flip: r.deg("alpha", 90), Refocus: r.deg("beta", 180), Saturation: r.deg("sat", 90),
+		Efficiency: r.num(r.Params, "eta", 1),
+	}
+}
+
+// target returns the Bloch numbers of a quantity and its stated error.
+func (r refRow) target(t *testing.T, quantity string) ([]float64, float64) {
+	v := r.Values[quantity]
+	var list []float64
+	if json.Unmarshal(v.Bloch, &list) != nil {
+		list = make([]float64, 1)
+		if err := json.Unmarshal(v.Bloch, &list[0]); err != nil {
+			t.Fatalf("%s: %s: %v", r.ID, quantity, err)
+		}
+	}
+	return list, v.Err
+}
+
+// forReference calls check for every row of a family, of the full table when
+// it is there.
+func forReference(t *testing.T, family string, check func(t *testing.T, r refRow) float64) {
+	t.Helper()
+	for _, dir := range []string{"../testdata/reference", "../../../shared/reference"} {
+		data, err := os.ReadFile(filepath.Join(dir, family+".json"))
+		if os.IsNotExist(err) && dir != "../testdata/reference" {
+			t.Logf("%s: the full table is not beside the project", family)
+			continue
+		}
+		if err != nil {
+			t.Fatal(err)
+		}
+		var f struct{ Rows []refRow }
+		if err := json.Unmarshal(data, &f); err != nil {
+			t.Fatal(err)
+		}
+		if len(f.Rows) < 8 {
+			t.Fatalf("%s: %d rows", family, len(f.Rows))
+		}
+		worst := 0.0
+		for _, r := range f.Rows {
+			worst = math.Max(worst, check(t, r))
+		}
+		fmt.Printf("%-24s %3d rows  worst difference %.1e\n", family, len(f.Rows), worst)
+	}
+}
+
+// compare returns the largest difference between got and the target relative
+// to it and fails beyond 1e-9 (plus three times the table's own error).
+func compare(t *testing.T, r refRow, quantity string, got ...float64) float64 {
+	t.Helper()
+	want, tabErr := r.target(t, quantity)
+	if len(want) != len(got) {
+		t.Fatalf("%s: %s: %d numbers, want %d", r.ID, quantity, len(got), len(want))
+	}
+	worst := 0.0
+	for i := range want {
+		diff := math.Abs(got[i] - want[i])
+		if tol := 1e-9*math.Abs(want[i]) + 3*tabErr; !(diff <= tol) {
+			t.Errorf("%s: %s[%d] = %.12g: want %.12g within %.1e", r.ID, quantity, i, got[i], want[i], tol)
+		}
+		worst = math.Max(worst, diff/math.Abs(want[i]))
+	}
+	return worst
+}
+
+func TestReference(t *testing.T) {
+	forReference(t, "01_spin_echo", func(t *testing.T, r refRow) float64 {
+		return compare(t, r, "sig", SpinEcho(r.pool(), r.timing()))
+	})
+	forReference(t, "02_saturation_recovery", func(t *testing.T, r refRow) float64 {
+		return compare(t, r, "sig", SaturationRecovery(r.pool(), r.timing(), r.readout()))
+	})
+	forReference(t, "03_inversion_recovery", func(t *testing.T, r refRow) float64 {
+		s := InversionRecovery(r.pool(), r.timing(), r.readout())
+		return max(compare(t, r, "sig_signed", s), compare(t, r, "sig_mag", math.Abs(s)))
+	})
+	forReference(t, "04_double_inversion", func(t *testing.T, r refRow) float64 {
+		s := DoubleInversion(r.pool(), r.timing(), SpinEcho90)
+		return max(compare(t, r, "sig_signed", s), compare(t, r, "sig_mag", math.Abs(s)))
+	})
+	forReference(t, "05_spoiled_gre", func(t *testing.T, r refRow) float64 {
+		p, tm := r.pool(), r.timing()
+		var transient []float64
+		for _, n := range r.Info["transient_pulse_numbers"].([]any) {
+			transient = append(transient, SpoiledGREPulse(p, tm, int(n.(float64))))
+		}
+		return max(compare(t, r, "sig", SpoiledGRE(p, tm)),
+			compare(t, r, "ernst_angle_deg", ErnstAngle(p, tm)*180/math.Pi),
+			compare(t, r, "transient", transient...))
+	})
+}
