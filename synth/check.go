@@ -108,7 +108,7 @@ func (s Scan) Check(field float64) error {
 	case s.Sequence == "":
 		return where("no sequence: want one of %s", strings.Join(Sequences(), ", "))
 	case !ok:
-		return where("unknown sequence %q%s", s.Sequence, DidYouMean(string(s.Sequence), Sequences()))
+		return where("unknown sequence %q%s", s.Sequence, maps.DidYouMean(string(s.Sequence), Sequences()))
 	case !(field > 0 && field <= 25):
 		return where("field = %g T: want above 0 and at most 25 T", field)
 	}

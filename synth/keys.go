@@ -95,7 +95,7 @@ func word(name, doc string, allowed []string, at func(*Scan) *string) key {
 	return key{name: name, doc: doc,
 		set: func(s *Scan, text string) error {
 			if allowed != nil && !slices.Contains(allowed, text) {
-				return fmt.Errorf("%q: want %s%s", text, strings.Join(allowed, ", "), DidYouMean(text, allowed))
+				return fmt.Errorf("%q: want %s%s", text, strings.Join(allowed, ", "), maps.DidYouMean(text, allowed))
 			}
 			*at(s) = text
 			return nil
@@ -161,7 +161,7 @@ func parseKind(text string) (maps.Kind, error) {
 		}
 		names = append(names, k.String())
 	}
-	return 0, fmt.Errorf("%q: want %s%s", text, strings.Join(names, ", "), DidYouMean(text, names))
+	return 0, fmt.Errorf("%q: want %s%s", text, strings.Join(names, ", "), maps.DidYouMean(text, names))
 }
 
 // agent returns the scan's contrast agent, made on first use.

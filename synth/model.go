@@ -14,7 +14,6 @@ import (
 type Condition struct {
 	B0       float64 // Hz off resonance of water
 	B1       float64 // flip angle obtained / nominal; 0 = 1
-	Velocity float64 // mm/s through the slice
 	Gradient float64 // Hz of B0 across the slice thickness
 }
 
@@ -37,7 +36,7 @@ func NewModel(field float64, s Scan) (*Model, error) {
 	if err := s.Check(field); err != nil {
 		return nil, err
 	}
-	m := &Model{scan: s, field: field, channels: 1, kinds: []maps.Kind{maps.Magnitude, maps.Real}}
+	m := &Model{scan: s.Complete(), field: field, channels: 1, kinds: []maps.Kind{maps.Magnitude, maps.Real}}
 	build, ok := builders[s.Sequence]
 	if !ok {
 		return nil, fmt.Errorf("scan %q: sequence %q: no signal model", s.Name, s.Sequence)
@@ -122,53 +121,40 @@ func (m *Model) Needs(t maps.Tissue) error {
 
 // Signal sets dst (len Channels) to the complex signal of a voxel of the
 // tissue, PD included. The phase is such that a fully relaxed voxel on
-// resonance is real and positive. A pool of T2* 0 gives nothing in a
-// gradient echo.
+// resonance is real and positive.
 func (m *Model) Signal(dst []complex128, t maps.Tissue, c Condition) {
+	tm := m.timing(c)
+	water, fat := m.turns(tm, c)
 	for ch := range dst {
-		var sum complex128
-		for _, p := range m.Pools(t, c, ch) {
-			sum += p.Echoes[m.centre()]
+		dst[ch] = 0
+		if w := t.PD * (1 - t.FatFraction); w != 0 {
+			dst[ch] += complex(w*m.pool(t.Pool, tm, ch), 0) * water
 		}
-		dst[ch] = sum
+		if f := t.PD * t.FatFraction; f != 0 {
+			dst[ch] += complex(f*m.pool(t.Fat, tm, ch), 0) * fat
+		}
 	}
 }
 
-// centre is the index of the echo at the centre of k-space.
-func (m *Model) centre() int { return 0 }
-
-// PoolSignal is what one pool of a tissue contributes to a voxel.
-type PoolSignal struct {
-	Fat    bool
-	Shift  float64      // Hz against water on resonance, of the whole pool
-	Echoes []complex128 // one per echo of the train, PD included
-}
-
-// Pools returns the signals of the tissue's pools in one channel, echo by echo.
-func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
-	out := make([]PoolSignal, 0, 2)
-	tm := m.scan.Timing
+// timing returns the scan's timing with the flip angles that a voxel sees.
+func (m *Model) timing(c Condition) maps.Timing {
+	t := m.scan.Timing
 	if c.B1 != 0 {
-		tm.Flip *= c.B1
-		tm.Refocus *= c.B1
-		tm.Saturation *= c.B1
+		t.Flip *= c.B1
+		t.Refocus *= c.B1
+		t.Saturation *= c.B1
 	}
-	turn := complex(1, 0)
-	if m.dephases {
-		turn = cmplx.Rect(sinc(c.Gradient*tm.TE), 2*math.Pi*c.B0*tm.TE)
+	return t
+}
+
+// turns returns the factors by which the phase of water and of fat has turned
+// and spread at the echo: 1 at a spin echo.
+func (m *Model) turns(t maps.Timing, c Condition) (water, fat complex128) {
+	if !m.dephases {
+		return 1, 1
 	}
-	if w := t.PD * (1 - t.FatFraction); w != 0 {
-		s := complex(w*m.pool(t.Pool, tm, channel), 0)
-		out = append(out, PoolSignal{Shift: c.B0, Echoes: []complex128{s * turn}})
-	}
-	if f := t.PD * t.FatFraction; f != 0 {
-		s := complex(f*m.pool(t.Fat, tm, channel), 0) * turn
-		if m.dephases {
-			s *= signal.FatPhase(tm.TE, m.field)
-		}
-		out = append(out, PoolSignal{Fat: true, Shift: c.B0, Echoes: []complex128{s}})
-	}
-	return out
+	water = cmplx.Rect(sinc(c.Gradient*t.TE), 2*math.Pi*c.B0*t.TE)
+	return water, water * signal.FatPhase(t.TE, m.field)
 }
 
 // sinc is sin(pi x)/(pi x).

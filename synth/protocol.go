@@ -11,6 +11,8 @@ import (
 	"github.com/goccy/go-yaml/ast"
 	"github.com/goccy/go-yaml/parser"
 	"github.com/goccy/go-yaml/token"
+
+	"voxelproof/maps"
 )
 
 // Limits of a protocol file.
@@ -240,7 +242,7 @@ func (r reader) protocol(root *ast.MappingNode) (*Protocol, error) {
 			scans = &es[i]
 		default:
 			known := []string{"protocol", "field", "body part", "defaults", "scans"}
-			return nil, r.errorf(e.key, "unknown key %q: want %s%s", e.name, strings.Join(known, ", "), DidYouMean(e.name, known))
+			return nil, r.errorf(e.key, "unknown key %q: want %s%s", e.name, strings.Join(known, ", "), maps.DidYouMean(e.name, known))
 		}
 	}
 	if scans == nil {
@@ -277,7 +279,7 @@ func (r reader) scan(s *Scan, n ast.Node) error {
 	for _, e := range es {
 		k := keyNamed(e.name)
 		if k == nil {
-			return r.errorf(e.key, "unknown key %q%s", e.name, DidYouMean(e.name, keyNames()))
+			return r.errorf(e.key, "unknown key %q%s", e.name, maps.DidYouMean(e.name, keyNames()))
 		}
 		text, err := r.text(e)
 		if err != nil {

@@ -1,0 +1,84 @@
+package render
+
+import (
+	"fmt"
+
+	"voxelproof/maps"
+	"voxelproof/synth"
+)
+
+// record returns what files and tickets say about a scan.
+func record(p *synth.Protocol, s synth.Scan) maps.Acquisition {
+	a := maps.Acquisition{
+		Timing: s.Timing, Name: s.Name, Protocol: p.Name, Sequence: string(s.Sequence), Field: p.Field,
+		BodyPart: p.BodyPart, Weighting: weighting(s), Seed: s.Seed,
+		SNR: s.Noise.SNR, SNRTissue: s.Noise.Tissue,
+		EchoTrainLength: 1, Averages: 1,
+		Notes: append(notes(s), limits...),
+	}
+	switch s.Sequence {
+	case synth.SpinEcho:
+		a.SpinEcho = true
+	case synth.SpoiledGRE:
+		a.GradientEcho, a.Spoiled = true, s.Pulse == 0
+	case synth.InversionRecovery, synth.DoubleInversion:
+		a.Inversion = true
+		a.SpinEcho, a.GradientEcho = s.Readout == synth.ReadSpinEcho, s.Readout == synth.ReadGradientEcho
+	case synth.SaturationRecovery:
+		a.MagnetPrepared = true
+		a.SpinEcho, a.GradientEcho = s.Readout == synth.ReadSpinEcho, s.Readout == synth.ReadGradientEcho
+	}
+	return a
+}
+
+// limits is what no voxel-level image shows.
+var limits = []string{
+	"voxel level: no k-space, so no blur, truncation, chemical shift, distortion or partial Fourier; resolution is that of the maps",
+	"left out: flow and pulsation, motion, magnetisation transfer, slice cross-talk, slice profile, coil shading",
+	"left out: anisotropy, exchange and multi-component relaxation within a tissue",
+}
+
+// notes lists what the scan's own numbers assume.
+func notes(s synth.Scan) []string {
+	n := []string{"ideal spoiling before each excitation; instantaneous pulses"}
+	if s.Efficiency != 0 {
+		n = append(n, fmt.Sprintf("inversion efficiency %g", s.Efficiency))
+	}
+	if s.Noise.SNR == 0 && s.Noise.Sigma == 0 {
+		n = append(n, "no noise")
+	}
+	return n
+}
+
+// weighting names the contrast by the usual ranges of TR, TE and TI (common
+// practice), in the words of DICOM's Acquisition Contrast.
+func weighting(s synth.Scan) string {
+	switch s.Sequence {
+	case synth.InversionRecovery:
+		switch {
+		case s.TI >= 1.5:
+			return "FLUID_ATTENUATED"
+		case s.TI <= 0.3:
+			return "STIR"
+		}
+		return "T1"
+	case synth.SpoiledGRE:
+		switch {
+		case s.TE >= 0.015:
+			return "T2_STAR"
+		case s.Flip < 0.14 && s.TR < 0.1: // 8 degrees
+			return "PROTON_DENSITY"
+		}
+		return "T1"
+	case synth.SpinEcho:
+		switch {
+		case s.TE >= 0.06 && s.TR >= 1.5:
+			return "T2"
+		case s.TE <= 0.04 && s.TR >= 1.5:
+			return "PROTON_DENSITY"
+		case s.TE <= 0.04 && s.TR <= 1:
+			return "T1"
+		}
+	}
+	return ""
+}
