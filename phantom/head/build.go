@@ -1,0 +1,208 @@
+// Package head builds a numerical head: anatomy made of shapes and a folded
+// cortex, varied by seed, with switchable findings. It is drawn from no person.
+package head
+
+import (
+	"context"
+	"fmt"
+	"math"
+	"runtime"
+	"slices"
+	"sync/atomic"
+
+	"golang.org/x/sync/errgroup"
+
+	"voxelproof/maps"
+	"voxelproof/phantom"
+)
+
+// Spec describes a head; its zero value is the default head at 1 mm and 1.5 T.
+type Spec struct {
+	Seed     uint64
+	Voxel    [3]float64 // mm along R, A and S; 0 = 1 mm
+	Field    float64    // T; 0 = 1.5 T
+	Findings []string   // names from Findings
+}
+
+// Head is a built head.
+type Head struct {
+	Set      *maps.Set
+	Findings []Finding
+}
+
+// Extent of the head in mm, RAS+: it ends at the neck.
+var (
+	low  = vec{-96, -120, -118}
+	high = vec{96, 124, 108}
+)
+
+// maxVoxels bounds the size of a head: about 10 bytes are needed for each.
+const maxVoxels = 120 << 20
+
+// Build makes the head of a spec with the tissues of a table. The same spec
+// gives the same bytes on any number of cores.
+func Build(ctx context.Context, spec Spec, table *phantom.Table, progress func(done, total int)) (*Head, error) {
+	if spec.Field == 0 {
+		spec.Field = 1.5
+	}
+	size := [3]int{}
+	voxels := 1.0
+	for a := range 3 {
+		if spec.Voxel[a] == 0 {
+			spec.Voxel[a] = 1
+		}
+		if v := spec.Voxel[a]; !(v >= 0.3 && v <= 10) {
+			return nil, fmt.Errorf("head: voxel = %g mm: want 0.3..10 mm", v)
+		}
+		size[a] = int(math.Round((high[a] - low[a]) / spec.Voxel[a]))
+		voxels *= float64(size[a])
+	}
+	if voxels > maxVoxels {
+		return nil, fmt.Errorf("head: %.0f million voxels would need about %.1f GB: want at most %d million; use larger voxels",
+			voxels/1e6, voxels*10/1e9, maxVoxels>>20)
+	}
+	lesions, err := newLesions(spec.Findings, spec.Seed)
+	if err != nil {
+		return nil, fmt.Errorf("head: %w", err)
+	}
+	tissues := make([]maps.Tissue, numTissues)
+	for i, n := range names {
+		if tissues[i], err = table.Tissue(n, spec.Field); err != nil {
+			return nil, fmt.Errorf("head: %w", err)
+		}
+	}
+	g := maps.NewGrid(size, spec.Voxel)
+	for a := range 3 {
+		g.Origin[a] += (low[a] + high[a]) / 2
+	}
+	m, err := maps.NewMixture(g, tissues)
+	if err != nil {
+		return nil, err
+	}
+	m.Texture = texture(spec.Seed)
+	an := newAnatomy(spec.Seed)
+	an.lesions = lesions
+	if err := fill(ctx, m, an, progress); err != nil {
+		return nil, err
+	}
+	set := maps.NewSet(g)
+	set.Mixture, set.Field = m, spec.Field
+	set.Origin = maps.Origin{Source: fmt.Sprintf("built-in numerical head, seed %d", spec.Seed), BodyPart: "HEAD"}
+	return &Head{Set: set, Findings: truth(m, spec.Findings)}, nil
+}
+
+// fill samples every voxel, slices in parallel. Voxels longer than 1.2 mm are
+// sampled several times along that axis.
+func fill(ctx context.Context, m *maps.Mixture, an *anatomy, progress func(done, total int)) error {
+	g := m.Grid
+	var n [3]int
+	edge := 0.0
+	for a := range 3 {
+		n[a] = max(1, int(math.Ceil(g.Spacing[a]/1.2)))
+		edge = max(edge, g.Spacing[a]/float64(n[a]))
+	}
+	eg, ctx := errgroup.WithContext(ctx)
+	eg.SetLimit(runtime.GOMAXPROCS(0))
+	var done atomic.Int64
+	for k := range g.Size[2] {
+		eg.Go(func() error {
+			if err := ctx.Err(); err != nil {
+				return err
+			}
+			c := canvas{shares: make([]float64, numTissues), edge: edge}
+			sum := make([]float64, numTissues)
+			total := float64(n[0] * n[1] * n[2])
+			err := m.Fill(k, func(i, j int, dst []maps.Part) []maps.Part {
+				clear(sum)
+				for s := range n[0] * n[1] * n[2] {
+					at := maps.Vec{
+						float64(i) + (float64(s%n[0])+0.5)/float64(n[0]) - 0.5,
+						float64(j) + (float64(s/n[0]%n[1])+0.5)/float64(n[1]) - 0.5,
+						float64(k) + (float64(s/n[0]/n[1])+0.5)/float64(n[2]) - 0.5,
+					}
+					an.sample(g.World(at), &c)
+					for t, w := range c.shares {
+						sum[t] += w
+					}
+				}
+				return maps.Apportion(dst, sum, total)
+			})
+			if progress != nil {
+				progress(int(done.Add(1)), g.Size[2])
+			}
+			return err
+		})
+	}
+	return eg.Wait()
+}
+
+// texture is the smooth unevenness of every tissue.
+func texture(seed uint64) *maps.Volume {
+	const step = 4.0
+	f := newRandomField(seed, 41, 14, 40, step)
+	var size [3]int
+	for a := range 3 {
+		size[a] = int((high[a]-low[a])/step) + 2
+	}
+	v := maps.NewVolume(maps.NewGrid(size, [3]float64{step, step, step}))
+	for a := range 3 {
+		v.Grid.Origin[a] += (low[a] + high[a]) / 2
+	}
+	for n := range v.Data {
+		ijk := v.Grid.IJK(n)
+		v.Data[n] = float32(f.at(v.Grid.World(maps.Vec{float64(ijk[0]), float64(ijk[1]), float64(ijk[2])})))
+	}
+	return v
+}
+
+// truth measures the findings as they were painted.
+func truth(m *maps.Mixture, findings []string) []Finding {
+	type sums struct {
+		n float64
+		c maps.Vec
+	}
+	per := make([]sums, numTissues)
+	slice := make([]float32, m.Grid.SliceLen())
+	present := m.Volumes()
+	for _, name := range findings {
+		for _, t := range tissuesOf(name) {
+			if present[t] == 0 || per[t].n > 0 {
+				continue
+			}
+			for k := range m.Grid.Size[2] {
+				m.Fractions(k, int(t), slice)
+				for n, f := range slice {
+					if f == 0 {
+						continue
+					}
+					w := m.Grid.World(maps.Vec{float64(n % m.Grid.Size[0]), float64(n / m.Grid.Size[0]), float64(k)})
+					per[t].n += float64(f)
+					for a := range 3 {
+						per[t].c[a] += float64(f) * w[a]
+					}
+				}
+			}
+		}
+	}
+	var out []Finding
+	for _, name := range findings {
+		f := Finding{Name: name}
+		var n float64
+		for _, t := range tissuesOf(name) {
+			f.Tissues = append(f.Tissues, names[t])
+			n += per[t].n
+			for a := range 3 {
+				f.Centre[a] += per[t].c[a]
+			}
+		}
+		if n > 0 {
+			for a := range 3 {
+				f.Centre[a] /= n
+			}
+		}
+		f.Volume = n * m.Grid.VoxelVolume()
+		out = append(out, f)
+	}
+	slices.SortFunc(out, func(a, b Finding) int { return slices.Index(Findings(), a.Name) - slices.Index(Findings(), b.Name) })
+	return out
+}

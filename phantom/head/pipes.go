@@ -1,0 +1,29 @@
+package head
+
+// Tubes whose place does not depend on the seed; those with a partner on the
+// left are given on the right.
+var (
+	canalPipe       = newPipe(node{vec{0, -26, -46}, 16}, node{vec{0, -34, -66}, 11}, node{vec{0, -40, -125}, 9.5})
+	midbrainPipe    = newPipe(node{vec{4, -16, 2}, 12}, node{vec{4, -20, -12}, 11})
+	medullaPipe     = newPipe(node{vec{0, -22, -36}, 10}, node{vec{0, -30, -58}, 7.5}, node{vec{0, -40, -125}, 5.5})
+	aqueductPipe    = newPipe(node{vec{0, -30, -20}, 1.6}, node{vec{0, -20, 0}, 1.4})
+	callosumPipe    = newPipe(node{vec{0, 28, 8}, 2.5}, node{vec{0, 39, 15}, 5}, node{vec{0, 34, 25}, 4}, node{vec{0, 18, 32}, 3.2}, node{vec{0, -8, 33.5}, 3}, node{vec{0, -28, 29}, 3.5}, node{vec{0, -38, 21}, 5.2})
+	nosePipe        = newPipe(node{vec{0, 96, -22}, 5}, node{vec{0, 110, -50}, 8.5})
+	neckPipe        = newPipe(node{vec{0, -18, -50}, 58}, node{vec{0, -22, -150}, 52})
+	jugularPipe     = newPipe(node{vec{30, 4, -50}, 5}, node{vec{36, 6, -125}, 5.5})
+	carotidNeckPipe = newPipe(node{vec{24, 14, -60}, 2.6}, node{vec{28, 16, -125}, 3.4})
+	petrousPipe     = newPipe(node{vec{18, -2, -32}, 6}, node{vec{58, -22, -34}, 12})
+	spinePipe       = newPipe(node{vec{0, -16, -66}, 9}, node{vec{0, -22, -130}, 11})
+	archPipe        = newPipe(node{vec{0, -52, -70}, 5}, node{vec{0, -58, -130}, 5})
+	jawPipe         = newPipe(node{vec{49, 14, -50}, 5}, node{vec{46, 30, -84}, 6}, node{vec{22, 78, -98}, 6.5}, node{vec{0, 86, -98}, 7})
+	teethPipe       = newPipe(node{vec{24, 56, -70}, 5}, node{vec{19, 76, -72}, 5.5}, node{vec{0, 84, -73}, 5.5})
+	cheekbonePipe   = newPipe(node{vec{44, 70, -40}, 6}, node{vec{62, 44, -38}, 4}, node{vec{68, 8, -34}, 4})
+	turbinateLow    = newPipe(node{vec{7, 44, -50}, 3.4}, node{vec{7.5, 74, -50}, 3.4})
+	turbinateMid    = newPipe(node{vec{6.5, 46, -40}, 2.4}, node{vec{6.5, 70, -40}, 2.4})
+	throatPipe      = newPipe(node{vec{0, 28, -46}, 8}, node{vec{0, 20, -70}, 6}, node{vec{0, 16, -130}, 7.5})
+	earPipe         = newPipe(node{vec{84, -12, -30}, 3}, node{vec{62, -10, -31}, 2.6})
+	caudatePipe     = newPipe(node{vec{13, 24, 9}, 6}, node{vec{15, 12, 17}, 5}, node{vec{18, -8, 24}, 3.2}, node{vec{24, -26, 21}, 2})
+	hippocampusPipe = newPipe(node{vec{25, -4, -18}, 5}, node{vec{27, -22, -10}, 4.2}, node{vec{24, -32, -2}, 3})
+	basilarPipe     = newPipe(node{vec{0, -2.2, -16}, 1.8}, node{vec{0, -3, -36}, 1.9})
+	carotidPipe     = newPipe(node{vec{12, 20, -28}, 2.5}, node{vec{11, 12, -12}, 2.3}, node{vec{22, 8, -9}, 1.6}, node{vec{38, 4, -6}, 1.3})
+)
