@@ -91,14 +91,14 @@ func Build(ctx context.Context, spec Spec, table *phantom.Table, progress func(d
 	return &Head{Set: set, Findings: truth(m, spec.Findings)}, nil
 }
 
-// fill samples every voxel, slices in parallel. Voxels longer than 1.2 mm are
+// fill samples every voxel, slices in parallel. Voxels longer than 1.6 mm are
 // sampled several times along that axis.
 func fill(ctx context.Context, m *maps.Mixture, an *anatomy, progress func(done, total int)) error {
 	g := m.Grid
 	var n [3]int
 	edge := 0.0
 	for a := range 3 {
-		n[a] = max(1, int(math.Ceil(g.Spacing[a]/1.2)))
+		n[a] = max(1, int(math.Ceil(g.Spacing[a]/1.6)))
 		edge = max(edge, g.Spacing[a]/float64(n[a]))
 	}
 	eg, ctx := errgroup.WithContext(ctx)
@@ -112,18 +112,31 @@ func fill(ctx context.Context, m *maps.Mixture, an *anatomy, progress func(done,
 			c := canvas{shares: make([]float64, numTissues), edge: edge}
 			sum := make([]float64, numTissues)
 			total := float64(n[0] * n[1] * n[2])
+			empty := 0 // voxels of the row before this one hold nothing
 			err := m.Fill(k, func(i, j int, dst []maps.Part) []maps.Part {
+				if i == 0 {
+					empty = 0
+				}
+				if i < empty {
+					return dst
+				}
 				clear(sum)
+				outside := math.Inf(1)
 				for s := range n[0] * n[1] * n[2] {
 					at := maps.Vec{
 						float64(i) + (float64(s%n[0])+0.5)/float64(n[0]) - 0.5,
 						float64(j) + (float64(s/n[0]%n[1])+0.5)/float64(n[1]) - 0.5,
 						float64(k) + (float64(s/n[0]/n[1])+0.5)/float64(n[2]) - 0.5,
 					}
-					an.sample(g.World(at), &c)
+					outside = min(outside, an.sample(g.World(at), &c))
 					for t, w := range c.shares {
 						sum[t] += w
 					}
+				}
+				// Far from the skin nothing can follow for half that distance: the
+				// distances of shapes are exact only near their surface.
+				if outside > 4 {
+					empty = i + int(outside/2/g.Spacing[0])
 				}
 				return maps.Apportion(dst, sum, total)
 			})

@@ -46,8 +46,9 @@ func (c *canvas) open(d float64) {
 	c.left = c.left*(1-f) + f
 }
 
-// sample paints everything that may be at point p (mm, RAS+).
-func (a *anatomy) sample(world vec, c *canvas) {
+// sample paints everything that may be at a point (mm, RAS+). It returns about
+// how far outside the head the point lies in mm, 0 within.
+func (a *anatomy) sample(world vec, c *canvas) float64 {
 	c.reset()
 	p := vec{world[0] / a.scale[0], world[1] / a.scale[1], world[2] / a.scale[2]}
 	cavity := a.cavity(p)
@@ -55,7 +56,7 @@ func (a *anatomy) sample(world vec, c *canvas) {
 	if inner < c.edge {
 		outline := a.outline(p, cavity)
 		if outline < -c.edge {
-			return
+			return -outline
 		}
 		a.soft(p, c, outline, cavity)
 		a.bones(p, c, cavity)
@@ -68,6 +69,7 @@ func (a *anatomy) sample(world vec, c *canvas) {
 		c.paint(csf, inner)
 		a.brain(p, c, cavity)
 	}
+	return 0
 }
 
 // soft paints skin, fat and muscle.
@@ -239,8 +241,12 @@ func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 	c.paint(thalamus, ellipsoid(m, vec{10.5, -14, 8}, vec{8.5, 15, 10}))
 	c.paint(cortex, hippocampusPipe.at(m)) // hippocampus
 	c.paint(csf, a.ventricles(p))
+	if p[2] > 14 || p[2] < -50 {
+		return
+	}
+	stem := a.stem(p)
 	// Cisterns about the midbrain and above the sella.
-	c.paint(csf, min(4.5-math.Abs(a.stem(p)+3.5), 2-p[2], surface+6))
+	c.paint(csf, meet(min(4.5-math.Abs(stem+3.5), surface+6), -p[2], 8))
 	c.paint(csf, ellipsoid(p, vec{0, 6, -12}, vec{13, 12, 7}))
 }
 
@@ -308,5 +314,5 @@ const (
 var names = [numTissues]string{
 	"skin", "fat", "muscle", "cortical bone", "marrow", "mucosa", "dura", "CSF", "cortex", "white matter",
 	"caudate", "putamen", "pallidum", "thalamus", "brain stem", "vitreous humour", "lens",
-	"venous blood", "arterial blood", "plaque", "acute infarct", "acute infarct in cortex", "mass", "necrosis", "oedema", "lacune",
+	"venous blood", "arterial blood", "plaque", "acute infarct, day 1", "acute infarct in cortex, day 1", "mass", "necrosis", "oedema", "lacune",
 }
