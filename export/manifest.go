@@ -17,15 +17,15 @@ type Manifest struct {
 	Tool      string           `json:"tool"`
 	Synthetic bool             `json:"synthetic"`
 	Caution   string           `json:"caution"`
-	Engine    string           `json:"engine"`
-	Namespace string           `json:"namespace"`
-	Path      string           `json:"path"` // "plain": no vector kernels took part
-	Date      string           `json:"date"`
+	Engine    string           `json:"engine,omitempty"`
+	Namespace string           `json:"namespace,omitempty"`
+	Path      string           `json:"path,omitempty"` // "plain": no vector kernels took part
+	Date      string           `json:"date,omitempty"`
 	StudyUID  string           `json:"studyInstanceUID,omitempty"`
 	FrameUID  string           `json:"frameOfReferenceUID,omitempty"`
-	Scale     float64          `json:"storedValuePerSignal"`
-	Shared    Window           `json:"sharedWindow"`
-	Series    []ManifestSeries `json:"series"`
+	Scale     float64          `json:"storedValuePerSignal,omitempty"`
+	Shared    Window           `json:"sharedWindow,omitzero"`
+	Series    []ManifestSeries `json:"series,omitempty"`
 	Files     []File           `json:"files"`
 }
 
@@ -114,4 +114,9 @@ func verify(root *os.Root, want File) error {
 		return fmt.Errorf("%s: %d bytes with hash %s: want %d with %s", want.Path, n, got, want.Size, want.SHA256)
 	}
 	return nil
+}
+
+// WriteManifest writes the manifest into the folder.
+func (f *Folder) WriteManifest(m *Manifest) error {
+	return f.Write(ManifestName, func(w io.Writer) error { return encodeJSON(w, m) })
 }

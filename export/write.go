@@ -124,7 +124,7 @@ func Write(ctx context.Context, f *Folder, r Request) (m *Manifest, err error) {
 	}
 	m = w.manifest()
 	m.Files = f.Files()
-	if err := f.Write(ManifestName, func(out io.Writer) error { return encodeJSON(out, m) }); err != nil {
+	if err := f.WriteManifest(m); err != nil {
 		return nil, err
 	}
 	if err := ctx.Err(); err != nil {

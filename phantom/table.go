@@ -312,3 +312,38 @@ func (t *Table) absent(name, quantity string, field float64) error {
 	return fmt.Errorf("tissue %q has no %s at %g T (there is one at %s): add it in a tissue file of your own",
 		name, quantity, field, strings.Join(at, ", "))
 }
+
+// Write writes the numbers of the named tissues in the form that Extend reads.
+func (t *Table) Write(w io.Writer, names []string) error {
+	var b strings.Builder
+	keys := map[string]string{}
+	var body strings.Builder
+	for _, n := range names {
+		fmt.Fprintf(&body, "\n[%s]\n", n)
+		for _, v := range t.entries[n] {
+			if keys[v.Source] == "" {
+				keys[v.Source] = fmt.Sprintf("s%d", len(keys)+1)
+				fmt.Fprintf(&b, "source %s = %s\n", keys[v.Source], v.Source)
+			}
+			field := "any"
+			if v.Field != 0 {
+				field = fmt.Sprintf("%g T", v.Field)
+			}
+			value, spread := v.Text()
+			fmt.Fprintf(&body, "%s | %s | %s | %s | %s | %s\n", v.Quantity, field, value, spread, v.Status, keys[v.Source])
+		}
+	}
+	_, err := io.WriteString(w, "# Tissue table. Columns: quantity | field | value | spread | status | source\n"+b.String()+body.String())
+	return err
+}
+
+// Text returns value and spread as the table writes them; an unknown spread is
+// "-".
+func (v Value) Text() (value, spread string) {
+	f := quantities[v.Quantity].factor
+	spread = "-"
+	if v.Spread != 0 {
+		spread = strings.TrimSpace(fmt.Sprintf("%.10g %s", v.Spread/f, v.Unit))
+	}
+	return strings.TrimSpace(fmt.Sprintf("%.10g %s", v.Value/f, v.Unit)), spread
+}

@@ -1,0 +1,254 @@
+package task
+
+import (
+	"bytes"
+	"context"
+	"fmt"
+	"io"
+	"math"
+	"strings"
+
+	"voxelproof/export"
+	"voxelproof/maps"
+	"voxelproof/maps/bids"
+	"voxelproof/maps/nifti"
+)
+
+// Save writes an object as files that Load reads again: a mixture as one
+// probability image per tissue with the tissue table, maps under their BIDS
+// names. A mixture is accompanied by single-valued maps of the dominant tissue,
+// which are no substitute for it: they cannot hold partial volume.
+type Save struct {
+	Object  Object
+	Out     string
+	Replace bool
+}
+
+// Saved tells what was written.
+type Saved struct {
+	Folder   string       `json:"folder"`
+	Files    int          `json:"files"`
+	Size     [3]int       `json:"voxels"`
+	Spacing  [3]float64   `json:"spacingMM"`
+	Tissues  []string     `json:"tissues,omitempty"`
+	Findings []FindingRow `json:"findings,omitempty"`
+	Notes    []string     `json:"notes,omitempty"`
+}
+
+// FindingRow is the ground truth of one finding.
+type FindingRow struct {
+	Name    string     `json:"name"`
+	Tissues []string   `json:"tissues"`
+	Volume  float64    `json:"volumeMM3"`
+	Centre  [3]float64 `json:"centreRASmm"`
+}
+
+// Run builds and writes.
+func (s Save) Run(ctx context.Context, p Progress) (*Saved, error) {
+	if s.Out == "" {
+		return nil, usagef("no output folder: want --out FOLDER")
+	}
+	l, err := s.Object.Load(ctx, p)
+	if err != nil {
+		return nil, err
+	}
+	f, err := export.NewFolder(s.Out, s.Replace, l.Inputs...)
+	if err != nil {
+		return nil, err
+	}
+	if err := save(ctx, f, l, p); err != nil {
+		return nil, joinDiscard(err, f)
+	}
+	m := export.Manifest{Tool: "voxelproof", Synthetic: true, Caution: export.Caution, Files: f.Files()}
+	if err := f.WriteManifest(&m); err != nil {
+		return nil, joinDiscard(err, f)
+	}
+	if err := ctx.Err(); err != nil {
+		return nil, joinDiscard(err, f)
+	}
+	if err := f.Commit(); err != nil {
+		return nil, err
+	}
+	out := &Saved{Folder: s.Out, Files: len(m.Files) + 1, Size: l.Set.Grid.Size, Spacing: l.Set.Grid.Spacing, Notes: l.Notes}
+	if mix := l.Set.Mixture; mix != nil {
+		for i, v := range mix.Volumes() {
+			if v > 0 {
+				out.Tissues = append(out.Tissues, mix.Tissues[i].Name)
+			}
+		}
+	}
+	for _, f := range l.Findings {
+		out.Findings = append(out.Findings, FindingRow{f.Name, f.Tissues, f.Volume, f.Centre})
+	}
+	return out, nil
+}
+
+func joinDiscard(err error, f *export.Folder) error {
+	if d := f.Discard(); d != nil {
+		return fmt.Errorf("%w (and clearing up: %v)", err, d)
+	}
+	return err
+}
+
+func save(ctx context.Context, f *export.Folder, l *Loaded, p Progress) error {
+	if l.Set.Mixture == nil {
+		for _, q := range l.Set.Has() {
+			if err := saveMap(f, q, l.Set.Volume(q), l.Set); err != nil {
+				return err
+			}
+		}
+		return nil
+	}
+	return saveMixture(ctx, f, l, p.step("writing maps"))
+}
+
+// saveMap writes one map with its sidecar.
+func saveMap(f *export.Folder, q maps.Quantity, v *maps.Volume, set *maps.Set) error {
+	stem := "sub-synthetic_" + bids.Suffix(q)
+	err := f.Write(stem+".nii.gz", func(w io.Writer) error {
+		return nifti.Write(w, v, nifti.Options{Gzip: true, Descrip: "voxelproof " + q.String()})
+	})
+	if err != nil {
+		return err
+	}
+	return f.Write(stem+".json", func(w io.Writer) error {
+		_, err := w.Write(bids.MapSidecar(q, set.Field, set.Origin.Source))
+		return err
+	})
+}
+
+func saveMixture(ctx context.Context, f *export.Folder, l *Loaded, progress func(done, total int)) error {
+	m, g := l.Set.Mixture, l.Set.Grid
+	volumes := m.Volumes()
+	var list bytes.Buffer
+	fmt.Fprintf(&list, "#source\t%s\n#field\t%g\n#person\t%s\ntissue\tfile\n", l.Set.Origin.Source, l.Set.Field, map[bool]string{true: "yes", false: "no"}[l.Set.Origin.Person])
+	var names []string
+	slice := make([]float32, g.SliceLen())
+	for t, tissue := range m.Tissues {
+		if volumes[t] == 0 {
+			continue
+		}
+		if err := ctx.Err(); err != nil {
+			return err
+		}
+		progress(t, len(m.Tissues))
+		file := fmt.Sprintf("sub-synthetic_label-%02d_probseg.nii.gz", t+1)
+		fmt.Fprintf(&list, "%s\t%s\n", tissue.Name, file)
+		names = append(names, tissue.Name)
+		err := f.Write(file, func(w io.Writer) error {
+			// 16 bits hold a fraction exactly.
+			nw, err := nifti.NewWriter(w, g, nifti.Options{Type: nifti.Uint16, Slope: 1.0 / maps.Whole, Gzip: true, Descrip: "share of " + clip(tissue.Name, 60)})
+			if err != nil {
+				return err
+			}
+			for k := range g.Size[2] {
+				m.Fractions(k, t, slice)
+				if err := nw.Write(slice); err != nil {
+					return err
+				}
+			}
+			return nw.Close()
+		})
+		if err != nil {
+			return err
+		}
+	}
+	fat := false
+	for _, n := range names {
+		fat = fat || n == "fat"
+	}
+	if !fat {
+		names = append(names, "fat") // tissues with a share of fat refer to it
+	}
+	var table bytes.Buffer
+	if err := l.Table.Write(&table, names); err != nil {
+		return err
+	}
+	for name, data := range map[string][]byte{mixtureList: list.Bytes(), "tissues.txt": table.Bytes(), "findings.tsv": findingsTSV(l)} {
+		if data == nil {
+			continue
+		}
+		if err := f.Write(name, func(w io.Writer) error { _, err := w.Write(data); return err }); err != nil {
+			return err
+		}
+	}
+	if m.Texture != nil {
+		err := f.Write("texture.nii.gz", func(w io.Writer) error {
+			return nifti.Write(w, m.Texture, nifti.Options{Gzip: true, Descrip: "texture: relative unevenness of tissues"})
+		})
+		if err != nil {
+			return err
+		}
+	}
+	return saveDominant(f, l)
+}
+
+// saveDominant writes the label image with its list and the single-valued maps
+// of the tissue that fills most of each voxel.
+func saveDominant(f *export.Folder, l *Loaded) error {
+	m, g := l.Set.Mixture, l.Set.Grid
+	labels := make([]uint8, g.Len())
+	n := g.SliceLen()
+	for k := range g.Size[2] {
+		m.Dominant(k, labels[k*n:(k+1)*n])
+	}
+	v := maps.NewVolume(g)
+	fill := func(of func(maps.Tissue) float64) {
+		for i, l := range labels {
+			v.Data[i] = 0
+			if l > 0 {
+				v.Data[i] = float32(of(m.Tissues[l-1]))
+			}
+		}
+	}
+	for i, lab := range labels {
+		v.Data[i] = float32(lab)
+	}
+	err := f.Write("sub-synthetic_dseg.nii.gz", func(w io.Writer) error {
+		return nifti.Write(w, v, nifti.Options{Type: nifti.Uint8, Gzip: true, Descrip: "dominant tissue"})
+	})
+	if err != nil {
+		return err
+	}
+	var b strings.Builder
+	b.WriteString("index\tname\n")
+	for i, t := range m.Tissues {
+		fmt.Fprintf(&b, "%d\t%s\n", i+1, t.Name)
+	}
+	if err := f.Write("sub-synthetic_dseg.tsv", func(w io.Writer) error { _, err := io.WriteString(w, b.String()); return err }); err != nil {
+		return err
+	}
+	for q, of := range map[maps.Quantity]func(maps.Tissue) float64{
+		maps.T1: func(t maps.Tissue) float64 { return mostly(t).T1 }, maps.T2: func(t maps.Tissue) float64 { return mostly(t).T2 },
+		maps.T2Star: func(t maps.Tissue) float64 { return mostly(t).T2Star },
+		maps.PD:     func(t maps.Tissue) float64 { return t.PD },
+	} {
+		fill(of)
+		if err := saveMap(f, q, v, l.Set); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// mostly is the relaxation of the larger pool of a tissue.
+func mostly(t maps.Tissue) maps.Pool {
+	if t.FatFraction > 0.5 {
+		return t.Fat
+	}
+	return t.Pool
+}
+
+func findingsTSV(l *Loaded) []byte {
+	if len(l.Findings) == 0 {
+		return nil
+	}
+	var b bytes.Buffer
+	b.WriteString("name\ttissues\tvolume_mm3\tx_mm_R\ty_mm_A\tz_mm_S\n")
+	for _, f := range l.Findings {
+		fmt.Fprintf(&b, "%s\t%s\t%.1f\t%.2f\t%.2f\t%.2f\n", f.Name, strings.Join(f.Tissues, ", "), math.Round(f.Volume*10)/10, f.Centre[0], f.Centre[1], f.Centre[2])
+	}
+	return b.Bytes()
+}
+
+func clip(s string, n int) string { return s[:min(len(s), n)] }
