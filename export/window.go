@@ -71,7 +71,7 @@ type Windows struct {
 }
 
 // NewWindows derives the windows of a study from predicted signals. The upper
-// end is a little above the brightest of the tissues that make up 97 % of the
+// end is a little above the brightest of the tissues that make up 99.5 % of the
 // object by volume, so that a trace of bright tissue does not darken the rest;
 // the lower end is 0, and minus the upper one for signed images. The shared
 // window covers the own windows of all series.
@@ -96,7 +96,7 @@ func newWindow(lo, hi float64, why string) Window {
 }
 
 // upper is the largest magnitude among the darkest tissues that together fill
-// 97 % of the volume.
+// 99.5 % of the volume.
 func upper(ts []maps.TissueSignal) float64 {
 	sorted := slices.Clone(ts)
 	slices.SortStableFunc(sorted, func(a, b maps.TissueSignal) int {
@@ -113,7 +113,7 @@ func upper(ts []maps.TissueSignal) float64 {
 		total += t.Volume
 	}
 	for _, t := range sorted {
-		if run += t.Volume; run >= 0.97*total {
+		if run += t.Volume; run >= 0.995*total {
 			return math.Abs(t.Value)
 		}
 	}

@@ -161,9 +161,10 @@ func (w *writer) all(ctx context.Context) error {
 	}
 	start := time.Duration(0)
 	for i, s := range w.Series {
+		at := start
 		if w.has(PNG) || w.has(PNG16) || w.has(DICOM) {
 			for _, k := range chosen[i] {
-				eg.Go(func() error { return w.slice(ctx, i, k, names[i], start) })
+				eg.Go(func() error { return w.slice(ctx, i, k, names[i], at) })
 			}
 		}
 		if w.has(NIfTI) && len(w.Slices) == 0 {

@@ -8,6 +8,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"slices"
 	"strings"
 	"time"
 
@@ -184,8 +185,14 @@ func (im Image) series(b *builder) {
 		part = "PHANTOM"
 	}
 	b.text(tag.BodyPartExamined, part)
+	if !slices.Contains(unpaired, part) {
+		b.text(tag.Laterality, "") // of a part that may be one of a pair: not known
+	}
 	b.text(tag.PatientPosition, "HFS")
 }
+
+// unpaired lists body parts that have no laterality.
+var unpaired = []string{"HEAD", "BRAIN", "NECK", "CSPINE", "TSPINE", "LSPINE", "SSPINE", "SPINE", "CHEST", "HEART", "ABDOMEN", "LIVER", "PELVIS", "PROSTATE", "UTERUS"}
 
 // scan states the timing, equal to the protocol's.
 func (im Image) scan(b *builder) {

@@ -254,7 +254,13 @@ func (h *header) grid() (g maps.Grid, odd []string, err error) {
 // qmatrix is the voxel-to-world matrix of the quaternion form.
 func (h *header) qmatrix(mm float64) (m [3][4]float64) {
 	b, c, d := h.quatern[0], h.quatern[1], h.quatern[2]
-	a := math.Sqrt(math.Max(0, 1-b*b-c*c-d*d))
+	a := 0.0
+	if rest := 1 - b*b - c*c - d*d; rest > 3e-7 {
+		a = math.Sqrt(rest)
+	} else if n := math.Sqrt(b*b + c*c + d*d); n > 0 {
+		// A half turn: what float32 leaves of the rest is rounding.
+		b, c, d = b/n, c/n, d/n
+	}
 	r := [3][3]float64{
 		{a*a + b*b - c*c - d*d, 2*b*c - 2*a*d, 2*b*d + 2*a*c},
 		{2*b*c + 2*a*d, a*a + c*c - b*b - d*d, 2*c*d - 2*a*b},
