@@ -54,6 +54,7 @@ type header struct {
 	slope   float64
 	inter   float64
 	pixdim  [8]float64
+	bits    int
 	qform   int
 	sform   int
 	quatern [3]float64
@@ -61,11 +62,12 @@ type header struct {
 	srow    [3][4]float64
 	units   byte
 	size    int // of the header itself
+	volumes int64
 	descrip string
 }
 
-// parseHeader reads the fixed part of a header; b holds 348 or 540 bytes.
-func parseHeader(b []byte, unscaled bool) (header, error) {
+// parseHeader reads the fixed part of a header; b holds 348 bytes or more.
+func parseHeader(b []byte, how Reading) (header, error) {
 	var h header
 	for _, o := range []binary.ByteOrder{binary.LittleEndian, binary.BigEndian} {
 		switch o.Uint32(b) {
@@ -82,18 +84,29 @@ func parseHeader(b []byte, unscaled bool) (header, error) {
 		if len(b) < 540 {
 			return h, fmt.Errorf("nifti: header of %d bytes: want 540", len(b))
 		}
+		if err := checkMagic(string(b[4:12]), "n+2\x00\r\n\x1a\n"); err != nil {
+			return h, err
+		}
 		h.parse2(b)
 	default:
-		magic := string(b[344:348])
-		if magic == "ni1\x00" {
-			return h, fmt.Errorf("nifti: magic \"ni1\": header and image are two files: want a single .nii file")
-		}
-		if magic != "n+1\x00" {
-			return h, fmt.Errorf("nifti: magic %q: want \"n+1\"", magic)
+		if err := checkMagic(string(b[344:348]), "n+1\x00"); err != nil {
+			return h, err
 		}
 		h.parse1(b)
 	}
-	return h, h.check(unscaled)
+	return h, h.check(how)
+}
+
+// checkMagic refuses what is no single-file image: a pair of files, or a copy
+// whose line ends were changed on the way (version 2 holds them to show that).
+func checkMagic(magic, want string) error {
+	switch {
+	case magic == want:
+		return nil
+	case magic[:2] == "ni":
+		return fmt.Errorf("nifti: magic %q: header and image are two files: want a single .nii file", magic)
+	}
+	return fmt.Errorf("nifti: magic %q: want %q", magic, want)
 }
 
 func (h *header) parse1(b []byte) {
@@ -104,7 +117,10 @@ func (h *header) parse1(b []byte) {
 		h.dim[n] = int64(i(40 + 2*n))
 		h.pixdim[n] = f(76 + 4*n)
 	}
-	h.dtype, h.offset = Type(i(70)), int64(f(108))
+	h.dtype, h.bits, h.offset = Type(i(70)), int(i(72)), -1
+	if at := f(108); math.Abs(at) < 1<<31 { // NaN is not
+		h.offset = int64(at)
+	}
 	h.slope, h.inter, h.units = f(112), f(116), b[123]
 	h.descrip = text(b[148:228])
 	h.qform, h.sform = int(i(252)), int(i(254))
@@ -121,7 +137,7 @@ func (h *header) parse2(b []byte) {
 	o := h.order
 	f := func(at int) float64 { return math.Float64frombits(o.Uint64(b[at:])) }
 	i := func(at int) int64 { return int64(o.Uint64(b[at:])) }
-	h.dtype = Type(o.Uint16(b[12:]))
+	h.dtype, h.bits = Type(o.Uint16(b[12:])), int(o.Uint16(b[14:]))
 	for n := range 8 {
 		h.dim[n] = i(16 + 8*n)
 		h.pixdim[n] = f(104 + 8*n)
@@ -148,25 +164,43 @@ func text(b []byte) string {
 	return string(b)
 }
 
+// maxVolumes bounds how much of a file of many volumes is read past the one
+// that is wanted.
+const maxVolumes = 1 << 20
+
 // check refuses what cannot be an image of ours before memory is taken.
-func (h *header) check(unscaled bool) error {
+func (h *header) check(how Reading) error {
 	if h.dim[0] < 1 || h.dim[0] > 7 {
 		return fmt.Errorf("nifti: dim[0] = %d: want 1..7", h.dim[0])
 	}
-	n := int64(1)
+	most := int64(maps.MaxVoxels)
+	if how.MaxVoxels > 0 {
+		most = min(most, int64(how.MaxVoxels))
+	}
+	n, volumes := int64(1), int64(1)
 	for a := 1; a <= 7; a++ {
 		d := h.dim[a]
-		if int64(a) > h.dim[0] {
+		switch {
+		case int64(a) > h.dim[0]:
 			h.dim[a] = 1
-			continue
+		case d < 1:
+			return fmt.Errorf("nifti: dim[%d] = %d: want at least 1", a, d)
+		case a <= 3 && d > most/n:
+			return fmt.Errorf("nifti: dim = %v: want at most %d voxels in a volume", h.dim[1:h.dim[0]+1], most)
+		case a <= 3:
+			n *= d
+		case d > maxVolumes/volumes:
+			return fmt.Errorf("nifti: dim = %v: want at most %d volumes", h.dim[1:h.dim[0]+1], maxVolumes)
+		default:
+			volumes *= d
 		}
-		if d < 1 {
-			return fmt.Errorf("nifti: dim[%d] = %d: want 1..32767", a, d)
-		}
-		if d > maps.MaxVoxels/n {
-			return fmt.Errorf("nifti: %v voxels: want at most %d in all", h.dim[1:h.dim[0]+1], maps.MaxVoxels)
-		}
-		n *= d
+	}
+	h.volumes = volumes
+	switch {
+	case how.Volume == 0 && volumes != 1:
+		return fmt.Errorf("nifti: %d volumes: want one, or a choice of one", volumes)
+	case how.Volume < 0 || int64(how.Volume) > volumes:
+		return fmt.Errorf("nifti: volume %d: want 1..%d", how.Volume, volumes)
 	}
 	if h.dtype.size() == 0 {
 		if name, ok := refused[h.dtype]; ok {
@@ -184,7 +218,7 @@ func (h *header) check(unscaled bool) error {
 	// A slope of 0 means "not scaled" in the standard, and elsewhere an image of
 	// nothing: the reader has to say which.
 	switch {
-	case unscaled && (h.slope == 0 || math.IsNaN(h.slope)):
+	case how.Unscaled && (h.slope == 0 || math.IsNaN(h.slope)):
 		h.slope, h.inter = 1, 0
 	case !(h.slope != 0) || math.IsNaN(h.slope) || math.IsInf(h.slope, 0) || math.IsNaN(h.inter) || math.IsInf(h.inter, 0):
 		return fmt.Errorf("nifti: scl_slope = %g, scl_inter = %g: want finite numbers and a slope that is not 0; if the values are stored unscaled, say so", h.slope, h.inter)
@@ -215,6 +249,9 @@ func (h *header) grid() (g maps.Grid, odd []string, err error) {
 	if h.units&7 == 0 {
 		odd = append(odd, "no spatial unit: mm assumed")
 	}
+	if h.bits != 8*h.dtype.size() {
+		odd = append(odd, fmt.Sprintf("bitpix = %d: the data type has %d bits", h.bits, 8*h.dtype.size()))
+	}
 	size := [3]int{int(h.dim[1]), int(h.dim[2]), int(h.dim[3])}
 	s := h.srow
 	for r := range s {
@@ -222,25 +259,32 @@ func (h *header) grid() (g maps.Grid, odd []string, err error) {
 			s[r][c] *= mm
 		}
 	}
-	q := h.qmatrix(mm)
+	q, qerr := h.quaternionGrid(size, mm)
 	switch {
 	case h.sform > 0:
 		if g, err = maps.GridFromAffine(size, s); err != nil {
 			return g, odd, fmt.Errorf("nifti: sform: %w", err)
 		}
-		if h.qform > 0 {
-			if qg, err := maps.GridFromAffine(size, q); err != nil {
-				odd = append(odd, "qform is not usable: "+err.Error()+"; sform taken")
-			} else if err := g.Differs(qg, 0.05*min(g.Spacing[0], g.Spacing[1], g.Spacing[2])); err != nil {
+		switch tol := 0.05 * min(g.Spacing[0], g.Spacing[1], g.Spacing[2]); {
+		case h.qform <= 0:
+			for a := range 3 {
+				if p := h.pixdim[a+1] * mm; math.Abs(p-g.Spacing[a]) > tol {
+					odd = append(odd, fmt.Sprintf("pixdim[%d] = %.4g mm and sform, %.4g mm, disagree; sform taken", a+1, p, g.Spacing[a]))
+				}
+			}
+		case qerr != nil:
+			odd = append(odd, "qform is not usable: "+qerr.Error()+"; sform taken")
+		default:
+			if err := g.Differs(q, tol); err != nil {
 				odd = append(odd, "sform and qform disagree ("+err.Error()+"); sform taken")
 			}
 		}
 		return g, odd, nil
 	case h.qform > 0:
-		if g, err = maps.GridFromAffine(size, q); err != nil {
-			return g, odd, fmt.Errorf("nifti: qform: %w", err)
+		if qerr != nil {
+			return g, odd, fmt.Errorf("nifti: qform: %w", qerr)
 		}
-		return g, odd, nil
+		return q, odd, nil
 	}
 	odd = append(odd, "neither sform nor qform: axes taken as right, anterior, superior with the centre at 0")
 	var spacing [3]float64
@@ -251,14 +295,24 @@ func (h *header) grid() (g maps.Grid, odd []string, err error) {
 	return g, odd, g.Validate()
 }
 
-// qmatrix is the voxel-to-world matrix of the quaternion form.
-func (h *header) qmatrix(mm float64) (m [3][4]float64) {
+// quaternionGrid is the grid of the quaternion form (method 2 of nifti1.h).
+func (h *header) quaternionGrid(size [3]int, mm float64) (maps.Grid, error) {
+	for a := 1; a <= 3; a++ {
+		if p := h.pixdim[a]; !(p > 0) {
+			return maps.Grid{}, fmt.Errorf("pixdim[%d] = %g: want more than 0", a, p)
+		}
+	}
+	var m [3][4]float64
 	b, c, d := h.quatern[0], h.quatern[1], h.quatern[2]
+	rounding := 3e-7 // of a sum of squares of float32
+	if h.version == 2 {
+		rounding = 1e-15
+	}
 	a := 0.0
-	if rest := 1 - b*b - c*c - d*d; rest > 3e-7 {
+	if rest := 1 - b*b - c*c - d*d; rest > rounding {
 		a = math.Sqrt(rest)
 	} else if n := math.Sqrt(b*b + c*c + d*d); n > 0 {
-		// A half turn: what float32 leaves of the rest is rounding.
+		// A half turn: what is left of the rest is rounding.
 		b, c, d = b/n, c/n, d/n
 	}
 	r := [3][3]float64{
@@ -277,5 +331,5 @@ func (h *header) qmatrix(mm float64) (m [3][4]float64) {
 		m[i][2] *= qfac
 		m[i][3] = h.qoffset[i] * mm
 	}
-	return m
+	return maps.GridFromAffine(size, m)
 }

@@ -58,8 +58,17 @@ func NewWriter(w io.Writer, g maps.Grid, opt Options) (*Writer, error) {
 		return nil, fmt.Errorf("nifti: version = %d: want 1 or 2", opt.Version)
 	case opt.Version == 1 && max(g.Size[0], g.Size[1], g.Size[2]) > math.MaxInt16:
 		return nil, fmt.Errorf("nifti: size %v: want sides of at most 32767 in version 1", g.Size)
+	case math.IsNaN(opt.Slope) || math.IsInf(opt.Slope, 0) || math.IsNaN(opt.Inter) || math.IsInf(opt.Inter, 0):
+		return nil, fmt.Errorf("nifti: slope = %g, intercept = %g: want finite numbers", opt.Slope, opt.Inter)
 	case len(opt.Descrip) > 79:
 		return nil, fmt.Errorf("nifti: descrip of %d bytes: want at most 79", len(opt.Descrip))
+	}
+	if opt.Version == 1 {
+		// Version 1 holds them as float32, and that is what readers undo.
+		opt.Slope, opt.Inter = float64(float32(opt.Slope)), float64(float32(opt.Inter))
+		if opt.Slope == 0 || math.IsInf(opt.Slope, 0) || math.IsInf(opt.Inter, 0) {
+			return nil, fmt.Errorf("nifti: slope and intercept are outside the range of version 1: want 1e-45..3e38")
+		}
 	}
 	out := &Writer{opt: opt, order: binary.LittleEndian, left: g.Len()}
 	if opt.BigEndian {
@@ -123,12 +132,12 @@ func Write(w io.Writer, v *maps.Volume, opt Options) error {
 	return out.Close()
 }
 
-// limits of the integer types.
+// limits of the integer types; those of 64 bits are the last float64 within.
 var limits = map[Type][2]float64{
 	Uint8: {0, math.MaxUint8}, Int8: {math.MinInt8, math.MaxInt8},
 	Uint16: {0, math.MaxUint16}, Int16: {math.MinInt16, math.MaxInt16},
 	Uint32: {0, math.MaxUint32}, Int32: {math.MinInt32, math.MaxInt32},
-	Uint64: {0, 1 << 63}, Int64: {-1 << 63, 1<<63 - 1024},
+	Uint64: {0, 1<<64 - 2048}, Int64: {-1 << 63, 1<<63 - 1024},
 }
 
 // put encodes one number.
