@@ -37,6 +37,9 @@ func NewModel(field float64, s Scan) (*Model, error) {
 		return nil, err
 	}
 	m := &Model{scan: s.Complete(), field: field, channels: 1, kinds: []maps.Kind{maps.Magnitude, maps.Real}}
+	if k := unmodelled(s); k != "" {
+		return nil, fmt.Errorf("scan %q: %s is not modelled at this level: leave it out", s.Name, k)
+	}
 	build, ok := builders[s.Sequence]
 	if !ok {
 		return nil, fmt.Errorf("scan %q: sequence %q: no signal model", s.Name, s.Sequence)
@@ -45,6 +48,21 @@ func NewModel(field float64, s Scan) (*Model, error) {
 		return nil, fmt.Errorf("scan %q: %w", s.Name, err)
 	}
 	return m, nil
+}
+
+// unmodelled names the first stated setting that no signal model here takes
+// into account, since a setting must never be ignored in silence.
+func unmodelled(s Scan) string {
+	for _, k := range keys {
+		switch k.name {
+		case "b", "directions", "fat suppression", "fat efficiency", "fat band", "agent", "dose", "r1", "r2",
+			"T2 preparation", "T2 preparation delay", "RF spoiling", "profile samples":
+			if k.get(&s) != "" {
+				return k.name
+			}
+		}
+	}
+	return ""
 }
 
 // builders choose the signal equation of each sequence.

@@ -44,6 +44,9 @@ func notes(s synth.Scan) []string {
 	if s.Efficiency != 0 {
 		n = append(n, fmt.Sprintf("inversion efficiency %g", s.Efficiency))
 	}
+	if s.Geometry != (synth.Geometry{}) || s.Sampling != (synth.Sampling{}) {
+		n = append(n, "NOT applied at voxel level: field of view, matrix, slices, bandwidth, averages and other settings of the acquisition")
+	}
 	if s.Noise.SNR == 0 && s.Noise.Sigma == 0 {
 		n = append(n, "no noise")
 	}

@@ -85,7 +85,7 @@ func (w weights) zero() bool {
 func (r *renderer) prepare() error {
 	m := r.set.Mixture
 	if m == nil {
-		return nil
+		return r.needs()
 	}
 	ch := make([]complex128, r.model.Channels())
 	r.flat, r.slope = make([]weights, len(ch)), make([]weights, len(ch))
@@ -114,6 +114,22 @@ func (r *renderer) prepare() error {
 		}
 	}
 	return nil
+}
+
+// needs refuses plain maps that lack what the scan depends on.
+func (r *renderer) needs() error {
+	pd := r.set.Volume(maps.PD)
+	if pd == nil || r.set.Volume(maps.T1) == nil {
+		return fmt.Errorf("scan %q: maps of %v: want at least T1, T2 or T2*, and PD", r.scan.Name, r.set.Has())
+	}
+	for n, x := range pd.Data {
+		if x > 0 {
+			t := r.set.Tissue(n)
+			t.Name = "the maps"
+			return r.model.Needs(t)
+		}
+	}
+	return fmt.Errorf("scan %q: PD is 0 everywhere", r.scan.Name)
 }
 
 // setSigma turns the stated noise into the SD of one channel.
