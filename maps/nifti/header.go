@@ -291,8 +291,10 @@ func (h *header) grid() (g maps.Grid, odd []string, err error) {
 	for a := range 3 {
 		spacing[a] = math.Abs(h.pixdim[a+1]) * mm
 	}
-	g = maps.NewGrid(size, spacing)
-	return g, odd, g.Validate()
+	if g = maps.NewGrid(size, spacing); g.Validate() != nil {
+		return g, odd, fmt.Errorf("nifti: pixdim: %w", g.Validate())
+	}
+	return g, odd, nil
 }
 
 // quaternionGrid is the grid of the quaternion form (method 2 of nifti1.h).
