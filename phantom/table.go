@@ -45,20 +45,20 @@ type Table struct {
 	entries map[string][]Value
 }
 
-// quantities of the table with the factor from the written unit to the inner
-// one, and the limits of a plausible value in the written unit.
+// quantities of the table with how many of the written unit make the inner one,
+// and the limits of a plausible value in the written unit.
 var quantities = map[string]struct {
 	unit     string
-	factor   float64
+	per      float64
 	min, max float64
 }{
-	"T1":      {"ms", 1e-3, 1, 20000},
-	"T2":      {"ms", 1e-3, 0.01, 10000},
-	"T2*":     {"ms", 1e-3, 0.01, 10000},
-	"T2train": {"ms", 1e-3, 0.01, 10000},
+	"T1":      {"ms", 1e3, 1, 20000},
+	"T2":      {"ms", 1e3, 0.01, 10000},
+	"T2*":     {"ms", 1e3, 0.01, 10000},
+	"T2train": {"ms", 1e3, 0.01, 10000},
 	"PD":      {"", 1, 0, 2},
 	"fat":     {"", 1, 0, 1},
-	"ADC":     {"um2/ms", 1e-3, 0, 10},
+	"ADC":     {"um2/ms", 1e3, 0, 10},
 	"uptake":  {"mM", 1, 0, 100},
 }
 
@@ -166,13 +166,13 @@ func (p *tableParser) number(s string) error {
 		if !ok || err != nil || !(x >= 0 && x <= q.max) {
 			return 0, fmt.Errorf("%s %s %q: want a number %g..%g %s", f[0], what, text, q.min, q.max, q.unit)
 		}
-		return x * q.factor, nil
+		return x / q.per, nil
 	}
 	var err error
 	if v.Value, err = read("value", f[2]); err != nil {
 		return err
 	}
-	if v.Value < q.min*q.factor {
+	if v.Value < q.min/q.per {
 		return fmt.Errorf("%s value %q: want a number %g..%g %s", f[0], f[2], q.min, q.max, q.unit)
 	}
 	if f[3] != "-" {
@@ -340,10 +340,10 @@ func (t *Table) Write(w io.Writer, names []string) error {
 // Text returns value and spread as the table writes them; an unknown spread is
 // "-".
 func (v Value) Text() (value, spread string) {
-	f := quantities[v.Quantity].factor
+	f := quantities[v.Quantity].per
 	spread = "-"
 	if v.Spread != 0 {
-		spread = strings.TrimSpace(fmt.Sprintf("%.10g %s", v.Spread/f, v.Unit))
+		spread = strings.TrimSpace(fmt.Sprintf("%.10g %s", v.Spread*f, v.Unit))
 	}
-	return strings.TrimSpace(fmt.Sprintf("%.10g %s", v.Value/f, v.Unit)), spread
+	return strings.TrimSpace(fmt.Sprintf("%.10g %s", v.Value*f, v.Unit)), spread
 }
