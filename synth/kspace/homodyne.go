@@ -31,7 +31,7 @@ func (d *Decoder) Homodyne(dst, low, sum []complex128, first int) {
 		for j := range n {
 			v := sum[i*n+j]
 			if k := j - centre; k >= -reach && k <= reach {
-				// A Hann taper keeps the phase map free of ringing.
+				// A triangular taper keeps the phase map free of ringing.
 				u := 1 - abs(float64(k))/float64(reach+1)
 				centreOnly[i*n+j] = v * complex(u, 0)
 			}
