@@ -91,14 +91,14 @@ func Build(ctx context.Context, spec Spec, table *phantom.Table, progress func(d
 	return &Head{Set: set, Findings: truth(m, spec.Findings)}, nil
 }
 
-// fill samples every voxel, slices in parallel. Voxels longer than 1.6 mm are
+// fill samples every voxel, slices in parallel. Voxels longer than 2.2 mm are
 // sampled several times along that axis.
 func fill(ctx context.Context, m *maps.Mixture, an *anatomy, progress func(done, total int)) error {
 	g := m.Grid
 	var n [3]int
 	edge := 0.0
 	for a := range 3 {
-		n[a] = max(1, int(math.Ceil(g.Spacing[a]/1.6)))
+		n[a] = max(1, int(math.Ceil(g.Spacing[a]/2.2)))
 		edge = max(edge, g.Spacing[a]/float64(n[a]))
 	}
 	eg, ctx := errgroup.WithContext(ctx)

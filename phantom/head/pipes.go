@@ -4,7 +4,7 @@ package head
 // left are given on the right.
 var (
 	canalPipe       = newPipe(node{vec{0, -26, -46}, 16}, node{vec{0, -34, -66}, 11}, node{vec{0, -40, -125}, 9.5})
-	midbrainPipe    = newPipe(node{vec{4, -16, 2}, 12}, node{vec{4, -20, -12}, 11})
+	midbrainPipe    = newPipe(node{vec{4, -17, -5}, 9.5}, node{vec{4, -20, -13}, 11})
 	medullaPipe     = newPipe(node{vec{0, -22, -36}, 10}, node{vec{0, -30, -58}, 7.5}, node{vec{0, -40, -125}, 5.5})
 	aqueductPipe    = newPipe(node{vec{0, -30, -20}, 1.6}, node{vec{0, -20, 0}, 1.4})
 	callosumPipe    = newPipe(node{vec{0, 28, 8}, 2.5}, node{vec{0, 39, 15}, 5}, node{vec{0, 34, 25}, 4}, node{vec{0, 18, 32}, 3.2}, node{vec{0, -8, 33.5}, 3}, node{vec{0, -28, 29}, 3.5}, node{vec{0, -38, 21}, 5.2})
