@@ -64,11 +64,18 @@ func NewMixture(g Grid, tissues []Tissue) (*Mixture, error) {
 
 // Fill sets slice k from what parts returns for each of its voxels; parts is
 // called in x-fastest order with an empty slice that it may append to. A
-// tissue may occur once in a voxel. Different slices may be filled at once.
-func (m *Mixture) Fill(k int, parts func(i, j int, dst []Part) []Part) error {
+// tissue may occur once in a voxel. Different slices may be filled at once. A
+// slice that is refused is left void.
+func (m *Mixture) Fill(k int, parts func(i, j int, dst []Part) []Part) (err error) {
 	nx, ny := m.Grid.Size[0], m.Grid.Size[1]
 	s := mixedSlice{row: make([]uint32, ny)}
 	label := m.label[k*nx*ny : (k+1)*nx*ny]
+	defer func() {
+		if err != nil {
+			clear(label)
+			m.slices[k] = mixedSlice{row: make([]uint32, ny)}
+		}
+	}()
 	var buf []Part
 	for j := range ny {
 		s.row[j] = uint32(len(s.first))
@@ -137,6 +144,26 @@ func (m *Mixture) At(i, j, k int, dst []Part) []Part {
 		return append(dst, s.parts[s.first[n]:s.first[n+1]]...)
 	default:
 		return append(dst, Part{l - 1, Whole})
+	}
+}
+
+// Row calls f for the voxels (i, j, k) of a row that are not void, i ascending.
+// The parts are valid during the call only.
+func (m *Mixture) Row(j, k int, f func(i int, parts []Part)) {
+	nx := m.Grid.Size[0]
+	s := &m.slices[k]
+	n := s.row[j]
+	var pure [1]Part
+	for i, l := range m.label[m.Grid.Index(0, j, k):][:nx] {
+		switch l {
+		case nothing:
+		case mixed:
+			f(i, s.parts[s.first[n]:s.first[n+1]])
+			n++
+		default:
+			pure[0] = Part{l - 1, Whole}
+			f(i, pure[:])
+		}
 	}
 }
 

@@ -5,7 +5,7 @@ import "strings"
 // DidYouMean returns "; did you mean X?" for the nearest known word, or "" when
 // none is near.
 func DidYouMean(word string, known []string) string {
-	best, dist := "", len(word)/2+2
+	best, dist := "", min(len(word), 64)/2+2
 	for _, k := range known {
 		if d := editDistance(strings.ToLower(word), strings.ToLower(k)); d < dist {
 			best, dist = k, d

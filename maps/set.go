@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"slices"
+	"strings"
 )
 
 // Set is everything known about one object on one grid: either a Mixture, or
@@ -45,12 +46,16 @@ func (s *Set) Add(q Quantity, v *Volume) error {
 	if len(v.Data) != v.Grid.Len() {
 		return fmt.Errorf("maps: %v holds %d values: want %d", q, len(v.Data), v.Grid.Len())
 	}
-	if err := s.Grid.Differs(v.Grid, 1e-3*slices.Min(s.Grid.Spacing[:])); err != nil {
+	if err := s.Grid.Differs(v.Grid, s.Tolerance()); err != nil {
 		return fmt.Errorf("maps: %v: %w; resample it to the other maps' grid", q, err)
 	}
 	s.vol[q] = v
 	return nil
 }
+
+// Tolerance is how far in mm the corners of two grids may be apart and the
+// grids still be one: a thousandth of a voxel.
+func (s *Set) Tolerance() float64 { return 1e-3 * slices.Min(s.Grid.Spacing[:]) }
 
 // Volume returns the map of q, or nil.
 func (s *Set) Volume(q Quantity) *Volume {
@@ -132,8 +137,16 @@ func (s *Set) Check() ([]Finding, error) {
 		f := &c.found[i]
 		if f.Count*20 > inside {
 			f.Refuse = true
-			return c.found, fmt.Errorf("maps: %v: that is %.1f %% of %d voxels with PD: want at most 5 %%",
-				*f, 100*float64(f.Count)/float64(inside), inside)
+			hint := ""
+			if strings.Contains(f.Rule, " > ") {
+				// An order that is broken so often has a cause, which a unit tells best.
+				if err := s.plausible(); err != nil {
+					return c.found, err
+				}
+				hint = "; are two maps swapped, or in different units?"
+			}
+			return c.found, fmt.Errorf("maps: %v: that is %.1f %% of %d voxels with PD: want at most 5 %%%s",
+				*f, 100*float64(f.Count)/float64(inside), inside, hint)
 		}
 	}
 	return c.found, s.plausible()
@@ -202,6 +215,7 @@ var limits = map[Quantity][2]float64{
 	T2Star: {0.0001, 5},
 	PD:     {0.01, 3},
 	ADC:    {1e-5, 1e-2},
+	B1:     {0.1, 5},
 }
 
 // plausible refuses maps whose median cannot be in the unit that was stated.
@@ -226,7 +240,14 @@ func (s *Set) plausible() error {
 		case PD:
 			hint = "proton density is relative to water = 1: state its scale"
 		}
-		return fmt.Errorf("maps: median %v is %.4g %s: want %g..%g; %s", q, med, q.Unit(), lim[0], lim[1], hint)
+		if q == B1 && med > lim[1] {
+			hint = "this looks like percent of the flip angle: state the unit (percent)"
+		}
+		unit := q.Unit()
+		if unit != "" {
+			unit = " " + unit
+		}
+		return fmt.Errorf("maps: median %v is %.4g%s: want %g..%g; %s", q, med, unit, lim[0], lim[1], hint)
 	}
 	return nil
 }

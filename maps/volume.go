@@ -23,55 +23,52 @@ func (v *Volume) Slice(k int) []float32 {
 // Sample returns the trilinear interpolation at a voxel coordinate; outside
 // the grid the border value is continued.
 func (v *Volume) Sample(ijk Vec) float64 {
-	var lo [3]int
-	var f Vec
-	for a := range 3 {
-		x := math.Min(math.Max(ijk[a], 0), float64(v.Grid.Size[a]-1))
-		lo[a] = min(int(x), max(v.Grid.Size[a]-2, 0))
-		f[a] = x - float64(lo[a])
-	}
 	var sum float64
-	for c := range 8 {
-		w := 1.0
-		var p [3]int
-		for a := range 3 {
-			if c>>a&1 == 1 {
-				w *= f[a]
-				p[a] = min(lo[a]+1, v.Grid.Size[a]-1)
-			} else {
-				w *= 1 - f[a]
-				p[a] = lo[a]
-			}
-		}
+	at, weight := v.neighbours(ijk)
+	for c, w := range weight {
 		if w != 0 { // so that a NaN beside the point does not spread
-			sum += float64(w * float64(v.Data[v.Grid.Index(p[0], p[1], p[2])]))
+			sum += float64(w * float64(v.Data[at[c]]))
 		}
 	}
 	return sum
 }
 
+// neighbours returns the eight voxels around a voxel coordinate and their
+// trilinear weights, which add to 1.
+func (v *Volume) neighbours(ijk Vec) (at [8]int, weight [8]float64) {
+	var lo, up [3]int // offsets of the lower and the upper neighbour along each axis
+	var f Vec         // share of the upper one
+	stride := 1
+	for a, n := range v.Grid.Size {
+		x := math.Min(math.Max(ijk[a], 0), float64(n-1))
+		i := min(int(x), max(n-2, 0))
+		f[a] = x - float64(i)
+		lo[a], up[a] = i*stride, min(i+1, n-1)*stride
+		stride *= n
+	}
+	for c := range 8 {
+		w, p := 1-f[0], lo[0]
+		if c&1 != 0 {
+			w, p = f[0], up[0]
+		}
+		if c&2 != 0 {
+			w, p = w*f[1], p+up[1]
+		} else {
+			w, p = w*(1-f[1]), p+lo[1]
+		}
+		if c&4 != 0 {
+			w, p = w*f[2], p+up[2]
+		} else {
+			w, p = w*(1-f[2]), p+lo[2]
+		}
+		at[c], weight[c] = p, w
+	}
+	return at, weight
+}
+
 // Resample returns v on another grid, by trilinear interpolation at voxel
 // centres; outside v it is 0.
-func (v *Volume) Resample(g Grid) *Volume {
-	out := NewVolume(g)
-	n := 0
-	for k := range g.Size[2] {
-		for j := range g.Size[1] {
-			for i := range g.Size[0] {
-				p := v.Grid.Voxel(g.World(Vec{float64(i), float64(j), float64(k)}))
-				inside := true
-				for a := range 3 {
-					inside = inside && p[a] >= -0.5 && p[a] <= float64(v.Grid.Size[a])-0.5
-				}
-				if inside {
-					out.Data[n] = float32(v.Sample(p))
-				}
-				n++
-			}
-		}
-	}
-	return out
-}
+func (v *Volume) Resample(g Grid) *Volume { return v.onto(g, v.Sample) }
 
 // Stats describes the values of a region.
 type Stats struct {
