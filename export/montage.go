@@ -6,6 +6,7 @@ import (
 	"image"
 	"image/color"
 	"image/draw"
+	"image/png"
 	"io"
 	"math"
 	"strings"
@@ -78,7 +79,7 @@ func Montage(ctx context.Context, w io.Writer, title string, panels []Panel, sca
 		}
 	}
 	pen.text(faces.plain, pad, height-10, faint, pen.fit(faces.plain, Caution+" Engine "+engine+".", width-2*pad))
-	return encodePNG(w, sheet, []Text{
+	return encodePNG(w, sheet, png.DefaultCompression, []Text{
 		{"Software", "voxelproof, engine " + engine},
 		{"Title", title},
 		{"Warning", "SYNTHETIC. " + Caution},

@@ -21,9 +21,9 @@ type Text struct{ Key, Value string }
 // encodePNG writes img with text chunks after its header.
 // Source: PNG specification (third edition), 11.3.3 textual information:
 // tEXt holds Latin-1, iTXt UTF-8.
-func encodePNG(w io.Writer, img image.Image, texts []Text) error {
+func encodePNG(w io.Writer, img image.Image, level png.CompressionLevel, texts []Text) error {
 	var b bytes.Buffer
-	enc := png.Encoder{CompressionLevel: png.BestSpeed}
+	enc := png.Encoder{CompressionLevel: level}
 	if err := enc.Encode(&b, img); err != nil {
 		return err
 	}

@@ -5,6 +5,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"image/png"
 	"io"
 	"path"
 	"runtime"
@@ -224,7 +225,7 @@ func (w *writer) slice(ctx context.Context, i, k int, name string, start time.Du
 	if w.has(PNG) {
 		own := w.windows.Own[i]
 		err := w.folder.Write(path.Join("png", name, file+".png"), func(out io.Writer) error {
-			return encodePNG(out, windowed(s.Header, pixels, w.scale, own),
+			return encodePNG(out, windowed(s.Header, pixels, w.scale, own), png.BestSpeed,
 				provenance(s.Header, w.Engine, k, w.scale, fmt.Sprintf("8-bit through window C %g W %g", own.Center, own.Width)))
 		})
 		if err != nil {
@@ -237,7 +238,7 @@ func (w *writer) slice(ctx context.Context, i, k int, name string, start time.Du
 			what += " + 32768"
 		}
 		err := w.folder.Write(path.Join("png16", name, file+".png"), func(out io.Writer) error {
-			return encodePNG(out, linear(s.Header, pixels, w.scale), provenance(s.Header, w.Engine, k, w.scale, what))
+			return encodePNG(out, linear(s.Header, pixels, w.scale), png.BestSpeed, provenance(s.Header, w.Engine, k, w.scale, what))
 		})
 		if err != nil {
 			return err
