@@ -127,7 +127,7 @@ func (a *anatomy) ventricles(p vec) float64 {
 // callosum arches over the ventricles from side to side.
 func (a *anatomy) callosum(p vec) float64 {
 	flat := vec{max(math.Abs(p[0])-15, 0), p[1], p[2]}
-	return callosumPipe.at(flat)
+	return callosumPipe.within(flat, 8)
 }
 
 // deep is the part of the hemispheres that no sulcus reaches.

@@ -306,8 +306,8 @@ func sliceList(text string, series []maps.Series) ([]int, error) {
 // Demo is Synth with everything chosen.
 func Demo(out string) Synth {
 	return Synth{
-		Object:   Object{Phantom: "head", Seed: 1, Voxel: 1.25, Findings: []string{"plaques", "infarct", "mass", "lacune"}},
-		Protocol: "demo", Out: out, Slices: "25-177/4", Replace: true,
+		Object:   Object{Phantom: "head", Seed: 1, Voxel: 1.4, Findings: []string{"plaques", "infarct", "mass", "lacune"}},
+		Protocol: "demo", Out: out, Slices: "22-158/4", Replace: true,
 		Formats: []export.Format{export.PNG, export.DICOM},
 	}
 }

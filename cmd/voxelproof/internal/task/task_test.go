@@ -1,0 +1,280 @@
+package task
+
+import (
+	"bytes"
+	"encoding/hex"
+	"math"
+	"os"
+	"path/filepath"
+	"runtime"
+	"strings"
+	"testing"
+
+	"gonum.org/v1/gonum/mat"
+	"gonum.org/v1/gonum/stat"
+
+	"voxelproof/export"
+	"voxelproof/maps"
+	"voxelproof/maps/mapstest"
+	"voxelproof/maps/nifti"
+	"voxelproof/synth"
+	"voxelproof/synth/render"
+)
+
+const root = "../../../.."
+
+// icbm is a file of the ICBM 2009a averages (open data, licence and source in
+// the README of the shared data).
+func icbm(t *testing.T, kind string) string {
+	return mapstest.Shared(t, root, "data/icbm2009a/mni_icbm152_"+kind+"_tal_nlin_sym_09a_converted.nii.gz")
+}
+
+func readVolume(t *testing.T, file string) *maps.Volume {
+	t.Helper()
+	f, err := os.Open(file)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer f.Close()
+	img, err := nifti.Read(f, nifti.Reading{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	return img.Volume
+}
+
+// A T1-weighted gradient echo of maps made from real grey and white matter
+// images looks like the real T1-weighted average, and a T2-weighted one like
+// its opposite. Any class intensities could reach r = 0.981 at most: this is a
+// check of plumbing, not of physics.
+func TestRealBrain(t *testing.T) {
+	grey, white, real := readVolume(t, icbm(t, "gm")), readVolume(t, icbm(t, "wm")), readVolume(t, icbm(t, "t1"))
+	o := Object{
+		Probabilities: []Probability{{"cortex", icbm(t, "gm")}, {"white matter", icbm(t, "wm")}},
+		Full:          255, Remainder: "CSF", Field: 1.5, Person: true,
+	}
+	out := filepath.Join(t.TempDir(), "out")
+	protocol := filepath.Join(t.TempDir(), "p.yaml")
+	err := os.WriteFile(protocol, []byte(`field: 1.5 T
+scans:
+  - {name: T1w, sequence: spoiled gradient echo, TR: 18 ms, TE: 10 ms, flip: 30 deg}
+  - {name: T2w, sequence: spin echo, TR: 4500 ms, TE: 100 ms}
+`), 0o644)
+	if err != nil {
+		t.Fatal(err)
+	}
+	s := Synth{Object: o, Protocol: protocol, Out: out, Formats: []export.Format{export.DICOM, export.NIfTI}}
+	if _, err := s.Run(t.Context(), nil); err != nil {
+		t.Fatal(err)
+	}
+	if n, _ := filepath.Glob(out + "/dicom/0101-t1w/*.dcm"); len(n) != real.Grid.Size[2] {
+		t.Errorf("%d DICOM files: want %d", len(n), real.Grid.Size[2])
+	}
+	t1, t2 := readVolume(t, out+"/nifti/0101-t1w.nii.gz"), readVolume(t, out+"/nifti/0201-t2w.nii.gz")
+
+	// The display grid shows the same voxels in another order: find each by place.
+	var want, got1, got2 []float64
+	var design []float64
+	for n := range grey.Data {
+		g, w := float64(grey.Data[n])/255, float64(white.Data[n])/255
+		if g+w <= 0.5 {
+			continue
+		}
+		p := grey.Grid.IJK(n)
+		q := t1.Grid.Voxel(grey.Grid.World(maps.Vec{float64(p[0]), float64(p[1]), float64(p[2])}))
+		m := t1.Grid.Index(int(q[0]+0.5), int(q[1]+0.5), int(q[2]+0.5))
+		want = append(want, float64(real.Data[n]))
+		got1 = append(got1, float64(t1.Data[m]))
+		got2 = append(got2, float64(t2.Data[m]))
+		design = append(design, w, g, math.Max(0, 1-g-w))
+	}
+	if len(want) != 1729575 {
+		t.Errorf("%d voxels: want 1729575", len(want))
+	}
+	r1, r2 := stat.Correlation(want, got1, nil), stat.Correlation(want, got2, nil)
+	t.Logf("T1w r = %.4f, T2w r = %.4f", r1, r2)
+	if r1 < 0.979 {
+		t.Errorf("T1w r = %.4f: want at least 0.979", r1)
+	}
+	if r2 > -0.9 {
+		t.Errorf("T2w r = %.4f: want at most -0.9", r2)
+	}
+	// Class intensities relative to white matter, by least squares.
+	classes := func(y []float64) (out [3]float64) {
+		a := mat.NewDense(len(y), 3, design)
+		var ata, aty mat.Dense
+		ata.Mul(a.T(), a)
+		aty.Mul(a.T(), mat.NewDense(len(y), 1, y))
+		var x mat.Dense
+		if err := x.Solve(&ata, &aty); err != nil {
+			t.Fatal(err)
+		}
+		for i := range out {
+			out[i] = x.At(i, 0) / x.At(0, 0)
+		}
+		return out
+	}
+	measured, predicted := classes(want), classes(got1)
+	t.Logf("white : grey : fluid, real %.3f, predicted %.3f", measured, predicted)
+	for i := range measured {
+		if math.Abs(measured[i]-predicted[i]) > 0.05 {
+			t.Errorf("class %d: real %.3f, predicted %.3f: want within 0.05", i, measured[i], predicted[i])
+		}
+	}
+}
+
+// golden pins the bytes of DICOM, PNG and the other files of a small study for
+// each engine version: when they change, bump render.EngineVersion and add its
+// line.
+var golden = map[string]string{
+	"1": "cc3570ee14858a6ac1c06d3d17f6c609ed60b8dcf9bb83b3c7f36784ebef084c",
+}
+
+func TestGoldenFiles(t *testing.T) {
+	if runtime.GOARCH != "amd64" {
+		t.Skip("math functions may differ in the last bit: the golden bytes are those of amd64")
+	}
+	t.Setenv("SOURCE_DATE_EPOCH", "")
+	var hashes []string
+	for _, f := range small(t, Object{Phantom: "head", Voxel: 7, Findings: []string{"infarct"}}, "18-20").Files {
+		hashes = append(hashes, f.Path+" "+f.SHA256)
+	}
+	got := hex.EncodeToString(sum([]byte(strings.Join(hashes, "\n"))))
+	if got != golden[render.EngineVersion] {
+		t.Errorf("engine %s writes %s: want %s; other bytes need another EngineVersion", render.EngineVersion, got, golden[render.EngineVersion])
+	}
+}
+
+// small makes a study of an object with the scans of the demo.
+func small(t *testing.T, o Object, slices string) *export.Manifest {
+	t.Helper()
+	s := Demo(filepath.Join(t.TempDir(), "out"))
+	s.Object, s.Slices, s.Formats = o, slices, []export.Format{export.PNG, export.PNG16, export.DICOM}
+	if _, err := s.Run(t.Context(), nil); err != nil {
+		t.Fatal(err)
+	}
+	m, err := Verify(t.Context(), s.Out)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return m
+}
+
+// segmented is a small object of five tissues.
+func segmented(t *testing.T) Object {
+	dir := t.TempDir()
+	v := maps.NewVolume(maps.NewGrid([3]int{12, 14, 8}, [3]float64{2, 2, 3}))
+	for n := range v.Data {
+		v.Data[n] = float32(n % 7)
+	}
+	var b bytes.Buffer
+	if err := nifti.Write(&b, v, nifti.Options{Type: nifti.Uint8}); err != nil {
+		t.Fatal(err)
+	}
+	o := Object{Labels: filepath.Join(dir, "seg.nii"), LabelList: filepath.Join(dir, "seg.tsv"), Person: true}
+	list := "index\tname\n1\twhite matter\n2\tcortex\n3\tCSF\n4\tfat\n5\tmarrow\n6\tmass\n"
+	if err := os.WriteFile(o.Labels, b.Bytes(), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(o.LabelList, []byte(list), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	return o
+}
+
+// The same request gives the same files for any number of cores.
+func TestFilesDoNotDependOnCores(t *testing.T) {
+	defer runtime.GOMAXPROCS(runtime.GOMAXPROCS(0))
+	var want []export.File
+	o := segmented(t)
+	for _, cores := range []int{1, 2, 7} {
+		runtime.GOMAXPROCS(cores)
+		got := small(t, o, "3-5").Files
+		for i := range want {
+			if got[i] != want[i] {
+				t.Fatalf("%d cores: %s differs", cores, got[i].Path)
+			}
+		}
+		want = got
+	}
+}
+
+// A mixture that is saved and loaded gives the same pictures.
+func TestSaveLoad(t *testing.T) {
+	o := Object{Phantom: "head", Voxel: 7, Findings: []string{"infarct"}, Field: 1.5}
+	dir := filepath.Join(t.TempDir(), "maps")
+	if _, err := (Save{Object: o, Out: dir}).Run(t.Context(), nil); err != nil {
+		t.Fatal(err)
+	}
+	pictures := func(o Object) *maps.Volume {
+		l, err := o.Load(t.Context(), nil)
+		if err != nil {
+			t.Fatal(err)
+		}
+		p, err := synth.ParseProtocol([]byte("field: 1.5 T\nscans:\n  - {sequence: spoiled gradient echo, TR: 20 ms, TE: 7 ms, flip: 25 deg}\n"), "p")
+		if err != nil {
+			t.Fatal(err)
+		}
+		series, err := render.Series(l.Set, p, 0)
+		if err != nil {
+			t.Fatal(err)
+		}
+		v, err := maps.Collect(t.Context(), series[0])
+		if err != nil {
+			t.Fatal(err)
+		}
+		return v
+	}
+	a, b := pictures(o), pictures(Object{Folder: dir})
+	if err := a.Grid.Differs(b.Grid, 1e-4); err != nil {
+		t.Fatal(err)
+	}
+	for n := range a.Data {
+		if math.Abs(float64(a.Data[n]-b.Data[n])) > 1e-6 {
+			t.Fatalf("voxel %v: %g and %g", a.Grid.IJK(n), a.Data[n], b.Data[n])
+		}
+	}
+}
+
+func TestSliceList(t *testing.T) {
+	series := []maps.Series{{Header: maps.Header{Grid: maps.NewGrid([3]int{1, 1, 20}, [3]float64{1, 1, 1})}}}
+	for text, want := range map[string]int{"": 0, "3": 1, "1-20": 20, "1-20/4": 5, "1-5,4-8,20": 9} {
+		if got, err := sliceList(text, series); err != nil || len(got) != want {
+			t.Errorf("%q: %v, %v: want %d slices", text, got, err, want)
+		}
+	}
+	for _, text := range []string{"0", "21", "5-4", "a", "1-20/0", "1-", ","} {
+		if _, err := sliceList(text, series); err == nil {
+			t.Errorf("%q: accepted", text)
+		}
+	}
+}
+
+// Images of the fluid null: the FLAIR of the demo leaves less than 2 % of its
+// brightest tissue in CSF, and the STIR less than 2 % in fat.
+func TestDemoNulls(t *testing.T) {
+	p, _, err := LoadProtocol("demo")
+	if err != nil {
+		t.Fatal(err)
+	}
+	l, err := Object{Phantom: "head", Voxel: 8, Field: p.Field}.Load(t.Context(), nil)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i, tissue := range map[int]string{3: "CSF", 4: "fat"} {
+		series, err := render.Series(l.Set, p, i)
+		if err != nil {
+			t.Fatal(err)
+		}
+		top, nulled := 0.0, math.NaN()
+		for _, s := range series[0].Tissues {
+			top = math.Max(top, s.Value)
+			if s.Tissue == tissue {
+				nulled = s.Value
+			}
+		}
+		if !(nulled < 0.02*top) {
+			t.Errorf("%s: %s gives %.4f of %.4f: want less than 2 %%", series[0].Scan.Name, tissue, nulled, top)
+		}
+	}
+}
