@@ -1,7 +1,6 @@
 package maps
 
 import (
-	"errors"
 	"fmt"
 	"math"
 )
@@ -207,9 +206,6 @@ type View struct {
 	Flip [3]bool
 }
 
-// errView cannot happen for a valid grid and is checked all the same.
-var errView = errors.New("grid: axes cannot be matched to the plane")
-
 // View returns the radiological display grid of a plane made of g's own
 // voxels (no resampling: an oblique grid stays oblique, nearest to the plane),
 // and where its voxels are found in g.
@@ -232,20 +228,13 @@ func (g Grid) View(p Plane) (Grid, View, error) {
 			best, v.Axis = sum, perm
 		}
 	}
-	if best < 0 {
-		return Grid{}, View{}, errView
-	}
 	for a := range 3 {
 		s := v.Axis[a]
 		out.Size[a], out.Spacing[a], out.Dir[a] = g.Size[s], g.Spacing[s], g.Dir[s]
-		if dot(want[a], g.Dir[s]) < 0 {
-			v.Flip[a] = true
-		}
-	}
-	// A left-handed source grid would give across x down = -normal: follow the
-	// normal with the slice order instead.
-	if n := cross(signed(out.Dir[0], v.Flip[0]), signed(out.Dir[1], v.Flip[1])); dot(n, signed(out.Dir[2], v.Flip[2])) < 0 {
-		v.Flip[2] = !v.Flip[2]
+		// Each axis is turned to its direction. That makes a right-handed grid of
+		// any: the best pairing aligns by more than 1 in all, and axes that mirror
+		// the plane's could reach 1 at most (the trace of a reflection).
+		v.Flip[a] = dot(want[a], g.Dir[s]) < 0
 	}
 	var start Vec
 	for a := range 3 {

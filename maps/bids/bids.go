@@ -1,7 +1,8 @@
 // Package bids knows the names and sidecars of the Brain Imaging Data Structure
 // as far as maps and images need them. It works on names and bytes, not files.
-// Source: Brain Imaging Data Structure specification 1.8, quantitative MRI
-// (suffixes, units) and common MRI metadata.
+// Source: Brain Imaging Data Structure specification 1.10, quantitative MRI
+// (suffixes, units) and common MRI metadata. Its unit for times is the second
+// and for rates 1/s; FFmap and ADCmap are in use and not in the standard.
 package bids
 
 import (
@@ -68,14 +69,19 @@ func Suffix(q maps.Quantity) string {
 	return ""
 }
 
-// factors of units by what they measure.
+// factors of units by what they measure, in the spelling of the standard
+// (mm^2/s) and the usual others.
 var factors = map[string]map[string]float64{
 	"time":      {"s": 1, "ms": 1e-3, "us": 1e-6},
 	"rate":      {"1/s": 1, "s^-1": 1, "s-1": 1, "Hz": 1, "1/ms": 1e3},
 	"share":     {"1": 1, "arbitrary": 1, "a.u.": 1, "": 1, "%": 0.01, "percent": 0.01},
-	"diffusion": {"mm^2/s": 1, "mm2/s": 1, "um^2/ms": 1e-3, "um2/ms": 1e-3, "10^-3 mm^2/s": 1e-3, "10^-6 mm^2/s": 1e-6},
-	"frequency": {"Hz": 1, "kHz": 1e3},
+	"diffusion": {"mm^2/s": 1, "mm2/s": 1, "um^2/ms": 1e-3, "um2/ms": 1e-3, "um^2/s": 1e-6, "10^-3 mm^2/s": 1e-3, "10^-6 mm^2/s": 1e-6},
+	"frequency": {"Hz": 1, "kHz": 1e3, "rad/s": 1 / (2 * math.Pi)},
+	"speed":     {"mm/s": 1, "cm/s": 10, "m/s": 1000},
 }
+
+// spelling brings the two micro signs and the raised numbers to plain letters.
+var spelling = strings.NewReplacer("\u00b5", "u", "\u03bc", "u", "\u00b2", "^2", "\u207b\u00b9", "^-1")
 
 // Factor returns what a map's values are multiplied by to get our inner unit,
 // given the unit as written; "" takes BIDS's default (seconds for times).
@@ -90,11 +96,13 @@ func Factor(q maps.Quantity, rate bool, unit string) (float64, error) {
 		kind, preset = "diffusion", "mm^2/s"
 	case q == maps.B0:
 		kind, preset = "frequency", "Hz"
+	case q == maps.Velocity:
+		kind, preset = "speed", "mm/s"
 	}
 	if unit == "" {
 		unit = preset
 	}
-	f, ok := factors[kind][strings.ReplaceAll(strings.ReplaceAll(unit, "µ", "u"), "²", "^2")]
+	f, ok := factors[kind][spelling.Replace(strings.TrimSpace(unit))]
 	if !ok {
 		var known []string
 		for u := range factors[kind] {
@@ -103,7 +111,11 @@ func Factor(q maps.Quantity, rate bool, unit string) (float64, error) {
 			}
 		}
 		sort.Strings(known)
-		return 0, fmt.Errorf("unit %q of a %v map: want one of %s", unit, q, strings.Join(known, ", "))
+		what := q.String()
+		if rate {
+			what = "rate (1/" + what + ")"
+		}
+		return 0, fmt.Errorf("unit %q of a %s map: want one of %s", unit, what, strings.Join(known, ", "))
 	}
 	return f, nil
 }
@@ -129,13 +141,16 @@ type Sidecar struct {
 // maxSidecar is the largest sidecar that is read, in bytes.
 const maxSidecar = 1 << 20
 
+// bom is the mark that some editors put before text.
+var bom = []byte("\ufeff")
+
 // ParseSidecar reads a JSON sidecar.
 func ParseSidecar(data []byte) (Sidecar, error) {
 	var s Sidecar
 	if len(data) > maxSidecar {
 		return s, fmt.Errorf("sidecar of %d bytes: want at most %d", len(data), maxSidecar)
 	}
-	if err := json.Unmarshal(data, &s); err != nil {
+	if err := json.Unmarshal(bytes.TrimPrefix(data, bom), &s); err != nil {
 		return s, fmt.Errorf("sidecar: %w", err)
 	}
 	if f := s.MagneticFieldStrength; f < 0 || f > 25 {
@@ -144,17 +159,20 @@ func ParseSidecar(data []byte) (Sidecar, error) {
 	return s, nil
 }
 
-// MapSidecar returns the sidecar of a map that we write.
+// MapSidecar returns the sidecar of a map that we write; field is in T, 0 =
+// not known.
 func MapSidecar(q maps.Quantity, field float64, source string) []byte {
 	unit := q.Unit()
 	switch q {
-	case maps.PD, maps.FatFraction:
+	case maps.PD:
+		unit = "arbitrary" // the standard has no other; it is relative to water
+	case maps.FatFraction, maps.B1, maps.Coil:
 		unit = "1"
 	case maps.ADC:
 		unit = "mm^2/s"
 	}
 	return encode(map[string]any{
-		"Units": unit, "MagneticFieldStrength": field, "Sources": source, "Synthetic": true,
+		"Units": unit, "MagneticFieldStrength": field, "Description": source, "Synthetic": true,
 	})
 }
 
@@ -165,7 +183,7 @@ func ImageSidecar(h maps.Header, version string) []byte {
 		"Modality": "MR", "Manufacturer": "voxelproof (computed, not scanned)", "SoftwareVersions": version,
 		"Synthetic": true, "NotForDiagnosis": true,
 		"ProtocolName": a.Name, "SeriesNumber": 100*h.Number + int(h.Kind), "PulseSequenceType": a.Sequence,
-		"ImageKind": h.Kind.String(), "ModelNotes": a.Notes, "Sources": h.Origin.Source,
+		"ImageKind": h.Kind.String(), "Description": h.Origin.Source,
 	}
 	for k, v := range map[string]float64{
 		"MagneticFieldStrength": a.Field, "RepetitionTime": a.TR, "EchoTime": a.TE, "InversionTime": a.TI,
@@ -174,6 +192,9 @@ func ImageSidecar(h maps.Header, version string) []byte {
 		if v != 0 {
 			m[k] = v
 		}
+	}
+	if len(a.Notes) > 0 {
+		m["ModelNotes"] = a.Notes
 	}
 	if a.EchoTrainLength > 1 {
 		m["EchoTrainLength"] = a.EchoTrainLength
@@ -203,7 +224,7 @@ func ParseLabels(data []byte) (map[int32]string, error) {
 	if len(data) > maxSidecar {
 		return nil, fmt.Errorf("label list of %d bytes: want at most %d", len(data), maxSidecar)
 	}
-	lines := strings.Split(strings.ReplaceAll(string(data), "\r\n", "\n"), "\n")
+	lines := strings.Split(strings.ReplaceAll(string(bytes.TrimPrefix(data, bom)), "\r\n", "\n"), "\n")
 	index, name := -1, -1
 	for i, c := range strings.Split(lines[0], "\t") {
 		switch strings.TrimSpace(c) {
