@@ -31,3 +31,19 @@ func FatPhase(te, b0 float64) complex128 {
 	}
 	return sum
 }
+
+// Peak is one line of a spectrum.
+type Peak struct {
+	Shift float64 // Hz against water
+	Share float64 // of the pool's protons
+}
+
+// FatPeaks returns the spectrum behind FatPhase at field b0 (T).
+// Source: Hamilton et al., NMR Biomed 24 (2011) 784.
+func FatPeaks(b0 float64) []Peak {
+	out := make([]Peak, len(fatPeaks))
+	for i, p := range fatPeaks {
+		out[i] = Peak{Gyromagnetic * b0 * p.ppm * 1e-6, p.share}
+	}
+	return out
+}

@@ -1,0 +1,37 @@
+package synth
+
+import (
+	"math"
+	"math/cmplx"
+
+	"voxelproof/maps"
+)
+
+// PoolSignal is what one pool of a voxel gives, echo by echo of a train (one
+// echo where there is no train).
+type PoolSignal struct {
+	Fat bool
+	// Echoes hold PD and the phase of field offsets. The phase of fat's own
+	// spectrum is left out: it goes on turning during the readout, which only the
+	// acquisition knows.
+	Echoes []complex128
+}
+
+// Pools returns the signals of water and of fat of a tissue in one channel, for
+// the acquired level: pools without protons are left out.
+func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
+	var out []PoolSignal
+	tm := m.timing(c)
+	turn := complex128(1)
+	if m.dephases {
+		turn = cmplx.Rect(sinc(c.Gradient*tm.TE), 2*math.Pi*c.B0*tm.TE)
+	}
+	add := func(fat bool, pd float64, p maps.Pool) {
+		if pd != 0 {
+			out = append(out, PoolSignal{fat, []complex128{complex(pd*m.pool(p, tm, channel), 0) * turn}})
+		}
+	}
+	add(false, t.PD*(1-t.FatFraction), t.Pool)
+	add(true, t.PD*t.FatFraction, t.Fat)
+	return out
+}
