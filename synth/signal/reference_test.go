@@ -4,6 +4,7 @@ import (
 	"encoding/json"
 	"fmt"
 	"math"
+	"math/rand/v2"
 	"os"
 	"path/filepath"
 	"testing"
@@ -144,4 +145,88 @@ func TestReference(t *testing.T) {
 			compare(t, r, "ernst_angle_deg", ErnstAngle(p, tm)*180/math.Pi),
 			compare(t, r, "transient", transient...))
 	})
+}
+
+// Laws over random tissues and timings: no signal above 1, decay with TE, the
+// limits of long TR and short TE, no dependence on the sign of the angle but
+// for the sign of the signal.
+func TestLaws(t *testing.T) {
+	r := rand.New(rand.NewPCG(1, 1))
+	between := func(lo, hi float64) float64 { return lo * math.Exp(r.Float64()*math.Log(hi/lo)) }
+	for range 5000 {
+		p := maps.Pool{T1: between(0.05, 5)}
+		p.T2 = between(0.001, 1) * p.T1
+		p.T2Star = between(0.1, 1) * p.T2
+		tm := maps.Timing{TR: between(0.01, 10), Flip: math.Pi * r.Float64(), Refocus: math.Pi * r.Float64(), Efficiency: r.Float64()}
+		tm.TE = tm.TR * 0.4 * r.Float64()
+		tm.TI = tm.TR * 0.5 * r.Float64()
+		tm.TS = tm.TI
+		tm.TI1 = tm.TR * 0.05
+		signals := map[string]func(maps.Timing) float64{
+			"se":   func(tm maps.Timing) float64 { return SpinEcho(p, tm) },
+			"ir":   func(tm maps.Timing) float64 { return InversionRecovery(p, tm, SpinEcho90) },
+			"irg":  func(tm maps.Timing) float64 { return InversionRecovery(p, tm, GradientEcho) },
+			"sr":   func(tm maps.Timing) float64 { return SaturationRecovery(p, tm, GradientEcho) },
+			"dir":  func(tm maps.Timing) float64 { return DoubleInversion(p, tm, SpinEcho90) },
+			"spgr": func(tm maps.Timing) float64 { return SpoiledGRE(p, tm) },
+		}
+		for name, f := range signals {
+			s := f(tm)
+			if !(math.Abs(s) <= 1) {
+				t.Fatalf("%s: %g for %+v %+v", name, s, p, tm)
+			}
+			flipped := tm
+			flipped.Flip = -tm.Flip
+			if d := f(flipped) + s; math.Abs(d) > 1e-12 {
+				t.Fatalf("%s: not odd in the flip angle by %g", name, d)
+			}
+		}
+		later := tm
+		later.TE *= 1.1
+		tm.Flip, later.Flip, tm.Refocus, later.Refocus = math.Pi/2, math.Pi/2, math.Pi, math.Pi
+		if a, b := SpinEcho(p, tm), SpinEcho(p, later); b > a {
+			t.Fatalf("spin echo grows with TE: %g, %g for %+v %+v", a, b, p, tm)
+		}
+		long := tm
+		long.TR = 1000
+		if a, want := SpinEcho(p, long), math.Exp(-tm.TE/p.T2); math.Abs(a-want) > 1e-9 {
+			t.Fatalf("TR -> inf: %g: want %g", a, want)
+		}
+		short := tm
+		short.TE = 0
+		if a, want := SpinEcho(p, short), 1-math.Exp(-tm.TR/p.T1); math.Abs(a-want) > 1e-12 {
+			t.Fatalf("TE -> 0: %g: want %g", a, want)
+		}
+	}
+}
+
+// Facts of the trade (common practice).
+func TestFacts(t *testing.T) {
+	// 37 % of the signal is left at TE = T2 when TR is long.
+	p := maps.Pool{T1: 0.8, T2: 0.08, T2Star: 0.06}
+	tm := maps.Timing{TR: 50, TE: 0.08, Flip: math.Pi / 2, Refocus: math.Pi}
+	if s := SpinEcho(p, tm); math.Abs(s-math.Exp(-1)) > 1e-6 {
+		t.Errorf("TE = T2: %g: want 0.3679", s)
+	}
+	// The simple form (1-exp(-TR/T1)) exp(-TE/T2) is up to 2.3 % high.
+	tm = maps.Timing{TR: 0.5, TE: 0.012, Flip: math.Pi / 2, Refocus: math.Pi}
+	simple := (1 - math.Exp(-tm.TR/p.T1)) * math.Exp(-tm.TE/p.T2)
+	if e := simple/SpinEcho(p, tm) - 1; e < 0.005 || e > 0.03 {
+		t.Errorf("the simple form is %.2f %% high: want 0.5..3", 100*e)
+	}
+	// Fluid null at 1.5 T, TR 9000: T1 4000 ms gives 2372 ms with TR in the
+	// formula and 2772 without (T1 ln 2).
+	fluid := maps.Pool{T1: 4, T2: 2, T2Star: 2}
+	lo, hi := 2.0, 3.0
+	for range 60 {
+		mid := (lo + hi) / 2
+		if InversionRecovery(fluid, maps.Timing{TR: 9, TI: mid, Flip: math.Pi / 2, Efficiency: 1}, GradientEcho) < 0 {
+			lo = mid
+		} else {
+			hi = mid
+		}
+	}
+	if math.Abs(lo-2.372) > 0.001 {
+		t.Errorf("fluid null %.4f s: want 2.372", lo)
+	}
 }
