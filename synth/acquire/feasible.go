@@ -170,20 +170,25 @@ func repetition(s synth.Scan, x *Prescription, h Hardware) error {
 	if s.Sequence == synth.PreparedGRE || s.Sequence == synth.TwoInversionGRE {
 		return nil // Check has compared the trains with TR
 	}
-	if busy := x.busy(s, h); s.TR < busy-slack {
-		return tooShort("TR", s.TR, busy, "preparation, echoes and spoiler of one slice")
+	least := x.busy(s, h)
+	for _, w := range waits(s) {
+		least += w
+	}
+	if s.TR < least-slack {
+		return tooShort("TR", s.TR, least, "preparation, echoes and spoiler of one slice")
 	}
 	return nil
 }
 
-// busy returns how long one slice occupies the scanner in each TR, in s.
+// busy returns how long one slice occupies the scanner in each TR, in s, its
+// waiting time after an inversion or saturation left out.
 func (x *Prescription) busy(s synth.Scan, h Hardware) float64 {
 	read := 1 / x.Bandwidth
 	pulse, tail := h.Excite, h.Spoil
 	if !spinEchoes(s) {
 		pulse, tail = h.Short, h.Lobe
 	}
-	lead, t := pulse/2, s.TE+read/2
+	t := s.TE + read/2
 	switch {
 	case s.Sequence == synth.PreparedGRE || s.Sequence == synth.TwoInversionGRE:
 		return s.TR
@@ -192,13 +197,14 @@ func (x *Prescription) busy(s synth.Scan, h Hardware) float64 {
 	case s.Train.Length > 1:
 		t = float64(s.Train.Length)*s.Train.Spacing + read/2
 	}
+	lead := pulse / 2
 	switch s.Sequence {
 	case synth.InversionRecovery:
-		lead = h.Invert/2 + s.TI
+		lead += h.Invert
 	case synth.DoubleInversion:
-		lead = h.Invert/2 + s.TI1 + s.TI
+		lead += 2 * h.Invert
 	case synth.SaturationRecovery:
-		lead += s.TS
+		lead += h.Excite
 	}
 	if s.Prep.T2Prep > 0 {
 		lead += s.Prep.T2Prep + s.Prep.T2PrepDelay
@@ -207,4 +213,36 @@ func (x *Prescription) busy(s synth.Scan, h Hardware) float64 {
 		lead += h.FatPulse
 	}
 	return lead + t + tail
+}
+
+// waits returns the delays of a prepared sequence during which other slices may
+// be prepared or read, in s.
+func waits(s synth.Scan) []float64 {
+	switch s.Sequence {
+	case synth.InversionRecovery:
+		return []float64{s.TI}
+	case synth.DoubleInversion:
+		return []float64{s.TI1, s.TI}
+	case synth.SaturationRecovery:
+		return []float64{s.TS}
+	}
+	return nil
+}
+
+// perTR returns how many slices fit into one TR. Prepared sequences prepare a
+// block of slices one after the other and then read them in the same order, so
+// a block must fit into each delay and into what remains of TR.
+func (x *Prescription) perTR(s synth.Scan, h Hardware) int {
+	busy := x.busy(s, h)
+	room, rest := math.Inf(1), s.TR
+	for _, w := range waits(s) {
+		room = math.Min(room, w)
+		rest -= w
+	}
+	room = math.Min(room, rest)
+	n := int(math.Floor(room/busy + 1e-9))
+	if n < 1 && rest >= busy-slack {
+		n = 1 // alone it need not share its delays
+	}
+	return n
 }

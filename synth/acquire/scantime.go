@@ -25,8 +25,7 @@ const dummyTime = 2.0
 //	TR x shots x averages x concatenations (x partitions in 3D), plus dummies
 //
 // shots = phase lines x partial Fourier / (train x acceleration), rounded up.
-// Inversions of other slices are assumed to be interleaved only as far as
-// whole slices fit into TR.
+// Prepared sequences interleave blocks of slices: see perTR.
 // Source: definition.
 func ScanTime(s synth.Scan, x *Prescription, h Hardware) Duration {
 	if h == (Hardware{}) {
@@ -47,7 +46,7 @@ func ScanTime(s synth.Scan, x *Prescription, h Hardware) Duration {
 		}
 		n *= float64(parts)
 	} else {
-		d.PerTR = int(math.Floor(s.TR/d.Busy + 1e-9))
+		d.PerTR = x.perTR(s, h)
 		if d.PerTR > 0 && x.Slices > 0 {
 			d.Passes = (x.Slices + d.PerTR - 1) / d.PerTR
 		}
