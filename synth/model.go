@@ -4,8 +4,10 @@ import (
 	"fmt"
 	"math"
 	"math/cmplx"
+	"sync"
 
 	"voxelproof/maps"
+	"voxelproof/synth/epg"
 	"voxelproof/synth/signal"
 )
 
@@ -22,8 +24,11 @@ type Condition struct {
 type Model struct {
 	scan  Scan
 	field float64 // T
-	// pool is the signal per unit PD of one pool in one channel, phase left out.
+	// pool is the signal per unit PD of one pool in one channel at the centre of
+	// k-space, phase left out.
 	pool func(p maps.Pool, t maps.Timing, channel int) float64
+	// train, of sequences with refocusing trains, sets dst to the echoes.
+	train func(dst []float64, p maps.Pool, t maps.Timing)
 	// dephases reports that the readout is a free-induction one: T2* counts and
 	// fat and field offsets turn the phase.
 	dephases bool
@@ -74,6 +79,7 @@ var builders = map[Sequence]func(*Model) error{
 	SaturationRecovery: recovery(signal.SaturationRecovery),
 	InversionRecovery:  recovery(signal.InversionRecovery),
 	DoubleInversion:    recovery(signal.DoubleInversion),
+	FastSpinEcho:       fastSpinEcho(signal.FastSpinEcho),
 	SpoiledGRE: func(m *Model) error {
 		m.dephases = true
 		m.pool = func(p maps.Pool, t maps.Timing, _ int) float64 {
@@ -95,12 +101,68 @@ func recovery(f func(maps.Pool, maps.Timing, signal.Readout) float64) func(*Mode
 		case "", ReadSpinEcho:
 		case ReadGradientEcho:
 			r, m.dephases = signal.GradientEcho, true
+		case ReadFastSpinEcho:
+			if m.scan.Sequence == InversionRecovery {
+				return fastSpinEcho(signal.InversionRecoveryFSE)(m)
+			}
+			return fmt.Errorf("readout %q: no signal model for %s", m.scan.Readout, m.scan.Sequence)
 		default:
 			return fmt.Errorf("readout %q: no signal model for %s", m.scan.Readout, m.scan.Sequence)
 		}
 		m.pool = func(p maps.Pool, t maps.Timing, _ int) float64 { return f(p, t, r) }
 		return nil
 	}
+}
+
+// fastSpinEcho builds the sequences with a refocusing train.
+func fastSpinEcho(f func([]float64, maps.Pool, maps.Timing, *epg.Train, *epg.Workspace)) func(*Model) error {
+	return func(m *Model) error {
+		s := m.scan
+		nominal := epg.NewTrain(s.Train.Spacing, s.refocusing(1))
+		scratch := sync.Pool{New: func() any { return &trainScratch{echoes: make([]float64, s.Train.Length)} }}
+		run := func(dst []float64, p maps.Pool, t maps.Timing, w *epg.Workspace) {
+			train := nominal
+			if t.Refocus != s.Refocus { // B1
+				train = epg.NewTrain(s.Train.Spacing, s.refocusing(t.Refocus/s.Refocus))
+			}
+			p.T2 = signal.TrainT2(p, s.Train.Spacing)
+			f(dst, p, t, train, w)
+		}
+		m.train = func(dst []float64, p maps.Pool, t maps.Timing) {
+			b := scratch.Get().(*trainScratch)
+			defer scratch.Put(b)
+			run(dst, p, t, &b.work)
+		}
+		m.pool = func(p maps.Pool, t maps.Timing, _ int) float64 {
+			b := scratch.Get().(*trainScratch)
+			defer scratch.Put(b)
+			run(b.echoes, p, t, &b.work)
+			return b.echoes[s.Train.Echo-1]
+		}
+		return nil
+	}
+}
+
+// trainScratch is the memory of one evaluation of a train.
+type trainScratch struct {
+	echoes []float64
+	work   epg.Workspace
+}
+
+// refocusing lists the angle of every refocusing pulse, scaled by b1.
+func (s Scan) refocusing(b1 float64) []float64 {
+	out := make([]float64, s.Train.Length)
+	for i := range out {
+		out[i] = s.Refocus * b1
+		switch len(s.Train.Angles) {
+		case 0:
+		case 1:
+			out[i] = s.Train.Angles[0] * b1
+		default:
+			out[i] = s.Train.Angles[i] * b1
+		}
+	}
+	return out
 }
 
 // Channels is the number of complex images that add linearly over tissues.

@@ -27,9 +27,21 @@ func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
 		turn = cmplx.Rect(sinc(c.Gradient*tm.TE), 2*math.Pi*c.B0*tm.TE)
 	}
 	add := func(fat bool, pd float64, p maps.Pool) {
-		if pd != 0 {
-			out = append(out, PoolSignal{fat, []complex128{complex(pd*m.pool(p, tm, channel), 0) * turn}})
+		if pd == 0 {
+			return
 		}
+		values := []float64{0}
+		if m.train != nil {
+			values = make([]float64, m.scan.Train.Length)
+			m.train(values, p, tm)
+		} else {
+			values[0] = m.pool(p, tm, channel)
+		}
+		echoes := make([]complex128, len(values))
+		for i, v := range values {
+			echoes[i] = complex(pd*v, 0) * turn
+		}
+		out = append(out, PoolSignal{fat, echoes})
 	}
 	add(false, t.PD*(1-t.FatFraction), t.Pool)
 	add(true, t.PD*t.FatFraction, t.Fat)

@@ -16,14 +16,20 @@ func record(p *synth.Protocol, s synth.Scan) maps.Acquisition {
 		EchoTrainLength: 1, Averages: 1,
 		Notes: append(notes(s), limits...),
 	}
+	if s.Train.Length > 0 {
+		a.EchoTrainLength, a.EchoSpacing = s.Train.Length, s.Train.Spacing
+	}
 	switch s.Sequence {
 	case synth.SpinEcho:
 		a.SpinEcho = true
 	case synth.SpoiledGRE:
 		a.GradientEcho, a.Spoiled = true, s.Pulse == 0
+	case synth.FastSpinEcho:
+		a.SpinEcho, a.SegmentedKSpace = true, true
 	case synth.InversionRecovery, synth.DoubleInversion:
 		a.Inversion = true
-		a.SpinEcho, a.GradientEcho = s.Readout == synth.ReadSpinEcho, s.Readout == synth.ReadGradientEcho
+		a.SpinEcho, a.GradientEcho = s.Readout != synth.ReadGradientEcho, s.Readout == synth.ReadGradientEcho
+		a.SegmentedKSpace = s.Readout == synth.ReadFastSpinEcho
 	case synth.SaturationRecovery:
 		a.MagnetPrepared = true
 		a.SpinEcho, a.GradientEcho = s.Readout == synth.ReadSpinEcho, s.Readout == synth.ReadGradientEcho
@@ -43,6 +49,9 @@ func notes(s synth.Scan) []string {
 	n := []string{"ideal spoiling before each excitation; instantaneous pulses"}
 	if s.Efficiency != 0 {
 		n = append(n, fmt.Sprintf("inversion efficiency %g", s.Efficiency))
+	}
+	if s.Train.Length > 0 {
+		n = append(n, "contrast of the echo at the centre of k-space; the blur of the echo train is left out at voxel level")
 	}
 	if s.Geometry != (synth.Geometry{}) || s.Sampling != (synth.Sampling{}) {
 		n = append(n, "NOT applied at voxel level: field of view, matrix, slices, bandwidth, averages and other settings of the acquisition")
@@ -73,7 +82,7 @@ func weighting(s synth.Scan) string {
 			return "PROTON_DENSITY"
 		}
 		return "T1"
-	case synth.SpinEcho:
+	case synth.SpinEcho, synth.FastSpinEcho:
 		switch {
 		case s.TE >= 0.06 && s.TR >= 1.5:
 			return "T2"
