@@ -105,6 +105,12 @@ func forReference(t *testing.T, family string, check func(t *testing.T, r refRow
 // to it and fails beyond 1e-9 (plus three times the table's own error).
 func compare(t *testing.T, r refRow, quantity string, got ...float64) float64 {
 	t.Helper()
+	return compareTo(t, r, 1e-9, quantity, got...)
+}
+
+// compareTo is compare with a tolerance of its own.
+func compareTo(t *testing.T, r refRow, rel float64, quantity string, got ...float64) float64 {
+	t.Helper()
 	want, tabErr := r.target(t, quantity)
 	if len(want) != len(got) {
 		t.Fatalf("%s: %s: %d numbers, want %d", r.ID, quantity, len(got), len(want))
@@ -112,7 +118,7 @@ func compare(t *testing.T, r refRow, quantity string, got ...float64) float64 {
 	worst := 0.0
 	for i := range want {
 		diff := math.Abs(got[i] - want[i])
-		if tol := 1e-9*math.Abs(want[i]) + 3*tabErr; !(diff <= tol) {
+		if tol := rel*math.Abs(want[i]) + 3*tabErr; !(diff <= tol) {
 			t.Errorf("%s: %s[%d] = %.12g: want %.12g within %.1e", r.ID, quantity, i, got[i], want[i], tol)
 		}
 		worst = math.Max(worst, diff/math.Abs(want[i]))
