@@ -196,8 +196,7 @@ func (p *Prescription) order(s synth.Scan) error {
 	switch {
 	case epi(s):
 		// Lines are one readout each: time along phase, not an echo index.
-		o.Order = "linear"
-		o.Single = n == 0
+		o.Order, o.Train, o.Single = "linear", 0, true
 	case s.Sequence == synth.PreparedGRE || s.Sequence == synth.TwoInversionGRE:
 		if s.Geometry.Volume3D && n == p.Slices {
 			break // the train runs along the partitions: every line is alike

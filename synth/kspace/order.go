@@ -13,24 +13,23 @@ type Lines struct {
 	Echo     []int // per line, the 0-based echo that records it; -1 = not recorded
 	Recorded int   // lines that the echo train really records: (N - First) / acceleration
 	Shots    int   // trains needed
-	Wraps    bool  // the effective echo time needs late echoes beside early ones at some line
+	Wraps    bool  // late echoes lie beside early ones at some line well inside k-space
 }
 
 // OrderOptions describes how lines are recorded.
 type OrderOptions struct {
 	Train    int     // echoes per excitation, 0 = 1
-	Centre   int     // 1-based echo that records the centre, 0 = whatever the order gives
+	Centre   int     // 1-based echo that records the centre; 0 = the first of centre-out, the middle one of linear
 	Order    string  // "linear" or "centre-out"; "" = centre-out when Centre is 1, else linear
 	Fraction float64 // of the lines recorded, 0.5..1; 0 = 1
 	Speed    float64 // acceleration by regular undersampling, >= 1; 0 = 1
 	Single   bool    // one train records everything
 }
 
-// Order assigns n phase lines to the echoes of a train. In linear order the
-// first echo records the lowest band of frequencies, the second the next, and
-// so on (or from the top, where that puts the wanted echo at the centre); in
-// centre-out order bands go outward. Where the wanted echo is another one, the
-// bands are moved cyclically.
+// Order assigns n phase lines to the echoes of a train, a band of neighbouring
+// lines to each echo. In linear order bands follow each other through k-space,
+// in centre-out order they go outward; they are moved cyclically so that the
+// wanted echo records the centre.
 //
 // Errors name n, the train or the acceleration and the nearest that work.
 func Order(n int, o OrderOptions) (Lines, error) {
@@ -110,17 +109,15 @@ func (l *Lines) assign(train int, o OrderOptions) {
 	}
 	band := func(r int) int { return r * train / kept }
 	at := band(rank[centre-l.First])
-	turn := 0
-	if want := o.Centre - 1; o.Centre > 0 && want != at {
-		if !outward && want == train-1-at || !outward && want == band(kept-1-rank[centre-l.First]) {
-			for i := range rank {
-				rank[i] = kept - 1 - i
-			}
-			at = band(rank[centre-l.First])
+	want := o.Centre - 1
+	if o.Centre == 0 {
+		want = 0
+		if !outward {
+			want = max(train/2, 1) - 1
 		}
-		turn = want - at
 	}
-	l.Wraps = turn != 0
+	turn := want - at
+	l.Wraps = turn < -1 || turn > 1
 	l.Echo = make([]int, l.N)
 	for i := range l.Echo {
 		l.Echo[i] = -1
