@@ -29,6 +29,9 @@ type Model struct {
 	pool func(p maps.Pool, t maps.Timing, channel int) float64
 	// train, of sequences with refocusing trains, sets dst to the echoes.
 	train func(dst []float64, p maps.Pool, t maps.Timing)
+	// offset, of sequences whose signal depends on the frequency itself, is the
+	// complex signal per unit PD df Hz off resonance; it replaces pool and phase.
+	offset func(p maps.Pool, t maps.Timing, df float64) complex128
 	// dephases reports that the readout is a free-induction one: T2* counts and
 	// fat and field offsets turn the phase.
 	dephases bool
@@ -41,7 +44,15 @@ func NewModel(field float64, s Scan) (*Model, error) {
 	if err := s.Check(field); err != nil {
 		return nil, err
 	}
-	m := &Model{scan: s.Complete(), field: field, channels: 1, kinds: []maps.Kind{maps.Magnitude, maps.Real}}
+	m := &Model{scan: s.Complete(), field: field, channels: 1, kinds: s.kindsOf()}
+	if a := m.scan.Agent; a != nil {
+		if err := a.complete(field); err != nil {
+			return nil, fmt.Errorf("scan %q: %w", s.Name, err)
+		}
+	}
+	if s.Prep.BValue > 0 || m.dixon() {
+		m.channels = 2
+	}
 	if k := unmodelled(s); k != "" {
 		return nil, fmt.Errorf("scan %q: %s is not modelled at this level: leave it out", s.Name, k)
 	}
@@ -60,8 +71,7 @@ func NewModel(field float64, s Scan) (*Model, error) {
 func unmodelled(s Scan) string {
 	for _, k := range keys {
 		switch k.name {
-		case "b", "directions", "fat suppression", "fat efficiency", "fat band", "agent", "dose", "r1", "r2",
-			"T2 preparation", "T2 preparation delay", "RF spoiling", "profile samples":
+		case "RF spoiling", "profile samples":
 			if k.get(&s) != "" {
 				return k.name
 			}
@@ -80,16 +90,112 @@ var builders = map[Sequence]func(*Model) error{
 	InversionRecovery:  recovery(signal.InversionRecovery),
 	DoubleInversion:    recovery(signal.DoubleInversion),
 	FastSpinEcho:       fastSpinEcho(signal.FastSpinEcho),
-	SpoiledGRE: func(m *Model) error {
-		m.dephases = true
-		m.pool = func(p maps.Pool, t maps.Timing, _ int) float64 {
-			if n := m.scan.Pulse; n > 0 {
-				return signal.SpoiledGREPulse(p, t, n)
-			}
-			return signal.SpoiledGRE(p, t)
-		}
+	SpinEchoEPI: func(m *Model) error {
+		m.pool = func(p maps.Pool, t maps.Timing, _ int) float64 { return signal.SpinEcho(p, t) }
 		return nil
 	},
+	GradientEchoEPI: freeInduction(signal.SpoiledGRE),
+	SSFPFID:         freeInduction(signal.SSFPFID),
+	SSFPEcho:        freeInduction(signal.SSFPEcho),
+	BalancedSSFP: func(m *Model) error {
+		m.offset = signal.BalancedSSFP
+		return nil
+	},
+	SpoiledGRE:      spoiledGRE,
+	PreparedGRE:     preparedGRE,
+	TwoInversionGRE: twoInversions,
+}
+
+// freeInduction builds sequences whose echo is a free-induction one.
+func freeInduction(f func(maps.Pool, maps.Timing) float64) func(*Model) error {
+	return func(m *Model) error {
+		m.dephases = true
+		m.pool = func(p maps.Pool, t maps.Timing, _ int) float64 { return f(p, t) }
+		return nil
+	}
+}
+
+// spoiledGRE builds the spoiled gradient echo with its options.
+func spoiledGRE(m *Model) error {
+	s := m.scan
+	m.dephases = true
+	if m.dixon() {
+		if err := m.inPhase(); err != nil {
+			return err
+		}
+	}
+	m.pool = func(p maps.Pool, t maps.Timing, channel int) float64 {
+		t.TE = m.te(channel)
+		switch {
+		case s.Prep.T2Prep > 0:
+			prep := signal.T2Preparation{Duration: s.Prep.T2Prep, Delay: s.Prep.T2PrepDelay, B1: t.Flip / s.Flip}
+			t.Flip = s.Flip // the module scales it with its own pulses
+			return signal.T2PreparedGRE(p, t, prep)
+		case s.Pulse > 0:
+			return signal.SpoiledGREPulse(p, t, s.Pulse)
+		}
+		return signal.SpoiledGRE(p, t)
+	}
+	return nil
+}
+
+// preparedGRE builds the inversion with one train of readouts.
+func preparedGRE(m *Model) error {
+	train := m.scan.readTrain()
+	m.dephases = true
+	m.pool = func(p maps.Pool, t maps.Timing, _ int) float64 { return signal.PreparedGRE(p, t, train, train.Centre) }
+	return nil
+}
+
+// twoInversions builds the sequence with two trains; its channels are theirs.
+func twoInversions(m *Model) error {
+	s, train := m.scan, m.scan.readTrain()
+	m.dephases, m.channels = true, 2
+	m.pool = func(p maps.Pool, t maps.Timing, channel int) float64 {
+		s1, s2 := signal.TwoInversions(p, t, train, s.Train.SecondTI, s.Train.SecondFlip*t.Flip/s.Flip)
+		if channel == 1 {
+			return s2
+		}
+		return s1
+	}
+	return nil
+}
+
+func (s Scan) readTrain() signal.ReadTrain {
+	return signal.ReadTrain{Length: s.Train.Length, Spacing: s.Train.Spacing, Centre: s.Train.Echo}
+}
+
+// dixon reports whether in-phase and opposed-phase echoes are combined.
+func (m *Model) dixon() bool {
+	for _, k := range m.scan.Images {
+		switch k {
+		case maps.WaterImage, maps.FatImage, maps.InPhase, maps.OpposedPhase:
+			return true
+		}
+	}
+	return false
+}
+
+// beat is the difference of water and the main fat peak in Hz.
+func (m *Model) beat() float64 { return -mainFat * 1e-6 * signal.Gyromagnetic * m.field }
+
+// inPhase refuses an echo time that is not one at which the main fat peak is in
+// phase with water: the opposed echo is taken half a period earlier.
+func (m *Model) inPhase() error {
+	turns := m.scan.TE * m.beat()
+	n := math.Max(math.Round(turns), 1)
+	if math.Abs(turns-n) > 0.06 {
+		return fmt.Errorf("TE = %s: water and fat images need an in-phase TE, such as %.2f ms at %g T", Time.Format(m.scan.TE), n/m.beat()*1e3, m.field)
+	}
+	return nil
+}
+
+// te is the echo time of a channel in s.
+func (m *Model) te(channel int) float64 {
+	if m.dixon() && channel == 0 {
+		return m.scan.TE - 0.5/m.beat()
+	}
+	return m.scan.TE
 }
 
 // recovery builds the prepared sequences with a spin-echo or gradient-echo
@@ -192,9 +298,12 @@ func (m *Model) Needs(t maps.Tissue) error {
 			return fmt.Errorf("scan %q: %s%s: T1 = %g s: want more than 0", m.scan.Name, p.what, name, p.T1)
 		case m.dephases && !(p.T2Star > 0):
 			return fmt.Errorf("scan %q: %s%s has no T2*: %s needs it", m.scan.Name, p.what, name, m.scan.Sequence)
-		case !m.dephases && !(p.T2 > 0):
+		case (!m.dephases || m.scan.Sequence == SSFPFID || m.scan.Sequence == SSFPEcho) && !(p.T2 > 0):
 			return fmt.Errorf("scan %q: %s%s has no T2: %s needs it", m.scan.Name, p.what, name, m.scan.Sequence)
 		}
+	}
+	if m.scan.Prep.BValue > 0 && t.PD > 0 && t.FatFraction < 1 && !(t.ADC > 0) {
+		return fmt.Errorf("scan %q: %s has no ADC: diffusion weighting needs it", m.scan.Name, name)
 	}
 	return nil
 }
@@ -204,16 +313,35 @@ func (m *Model) Needs(t maps.Tissue) error {
 // resonance is real and positive.
 func (m *Model) Signal(dst []complex128, t maps.Tissue, c Condition) {
 	tm := m.timing(c)
-	water, fat := m.turns(tm, c)
 	for ch := range dst {
-		dst[ch] = 0
-		if w := t.PD * (1 - t.FatFraction); w != 0 {
-			dst[ch] += complex(w*m.pool(t.Pool, tm, ch), 0) * water
+		w, f := m.parts(t, c, ch)
+		if m.offset != nil {
+			dst[ch] = m.offsets(w, f, tm, c)
+			continue
 		}
-		if f := t.PD * t.FatFraction; f != 0 {
-			dst[ch] += complex(f*m.pool(t.Fat, tm, ch), 0) * fat
+		water, fat := m.turns(m.te(ch), c)
+		dst[ch] = 0
+		if w.pd != 0 {
+			dst[ch] += complex(w.pd*m.pool(w.pool, tm, ch), 0) * water
+		}
+		if f.pd != 0 {
+			dst[ch] += complex(f.pd*m.pool(f.pool, tm, ch), 0) * fat
 		}
 	}
+}
+
+// offsets adds water and the peaks of fat at their own frequencies.
+func (m *Model) offsets(w, f part, t maps.Timing, c Condition) complex128 {
+	sum := complex(w.pd, 0)
+	if w.pd != 0 {
+		sum *= m.offset(w.pool, t, c.B0)
+	}
+	if f.pd != 0 {
+		for _, peak := range signal.FatPeaks(m.field) {
+			sum += complex(f.pd*peak.Share, 0) * m.offset(f.pool, t, c.B0+peak.Shift)
+		}
+	}
+	return sum
 }
 
 // timing returns the scan's timing with the flip angles that a voxel sees.
@@ -229,12 +357,12 @@ func (m *Model) timing(c Condition) maps.Timing {
 
 // turns returns the factors by which the phase of water and of fat has turned
 // and spread at the echo: 1 at a spin echo.
-func (m *Model) turns(t maps.Timing, c Condition) (water, fat complex128) {
+func (m *Model) turns(te float64, c Condition) (water, fat complex128) {
 	if !m.dephases {
 		return 1, 1
 	}
-	water = cmplx.Rect(sinc(c.Gradient*t.TE), 2*math.Pi*c.B0*t.TE)
-	return water, water * signal.FatPhase(t.TE, m.field)
+	water = cmplx.Rect(sinc(c.Gradient*te), 2*math.Pi*c.B0*te)
+	return water, water * signal.FatPhase(te, m.field)
 }
 
 // sinc is sin(pi x)/(pi x).
@@ -245,10 +373,41 @@ func sinc(x float64) float64 {
 	return math.Sin(math.Pi*x) / (math.Pi * x)
 }
 
-// Combine returns the pixel of an image kind from the channels of a voxel.
+// Combine returns the pixel of an image kind from the channels of a voxel. An
+// ADC map is in 1e-6 mm2/s and 0 where there is no signal.
 func (m *Model) Combine(k maps.Kind, ch []complex128) float64 {
-	if k == maps.Real {
+	switch k {
+	case maps.Real:
 		return real(ch[0])
+	case maps.TraceImage:
+		return cmplx.Abs(ch[1])
+	case maps.ADCMap:
+		s0, s := cmplx.Abs(ch[0]), cmplx.Abs(ch[1])
+		if s <= 0 || s0 <= s {
+			return 0
+		}
+		return 1e6 * math.Log(s0/s) / m.scan.Prep.BValue
+	case maps.RatioImage:
+		n := real(ch[0])*real(ch[1]) + imag(ch[0])*imag(ch[1])
+		d := real(ch[0])*real(ch[0]) + imag(ch[0])*imag(ch[0]) + real(ch[1])*real(ch[1]) + imag(ch[1])*imag(ch[1])
+		if d == 0 {
+			return 0
+		}
+		return n / d
+	case maps.InPhase:
+		return cmplx.Abs(ch[1])
+	case maps.OpposedPhase:
+		return cmplx.Abs(ch[0])
+	case maps.WaterImage, maps.FatImage:
+		// The opposed echo keeps its polarity against the in-phase one.
+		ip, op := cmplx.Abs(ch[1]), cmplx.Abs(ch[0])
+		if real(ch[0])*real(ch[1])+imag(ch[0])*imag(ch[1]) < 0 {
+			op = -op
+		}
+		if k == maps.WaterImage {
+			return (ip + op) / 2
+		}
+		return (ip - op) / 2
 	}
 	return cmplx.Abs(ch[0])
 }

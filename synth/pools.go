@@ -24,17 +24,23 @@ func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
 	tm := m.timing(c)
 	turn := complex128(1)
 	if m.dephases {
-		turn = cmplx.Rect(sinc(c.Gradient*tm.TE), 2*math.Pi*c.B0*tm.TE)
+		te := m.te(channel)
+		turn = cmplx.Rect(sinc(c.Gradient*te), 2*math.Pi*c.B0*te)
 	}
 	add := func(fat bool, pd float64, p maps.Pool) {
 		if pd == 0 {
 			return
 		}
 		values := []float64{0}
-		if m.train != nil {
+		switch {
+		case m.offset != nil:
+			v := m.offset(p, tm, c.B0)
+			out = append(out, PoolSignal{fat, []complex128{complex(pd, 0) * v}})
+			return
+		case m.train != nil:
 			values = make([]float64, m.scan.Train.Length)
 			m.train(values, p, tm)
-		} else {
+		default:
 			values[0] = m.pool(p, tm, channel)
 		}
 		echoes := make([]complex128, len(values))
@@ -43,7 +49,8 @@ func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
 		}
 		out = append(out, PoolSignal{fat, echoes})
 	}
-	add(false, t.PD*(1-t.FatFraction), t.Pool)
-	add(true, t.PD*t.FatFraction, t.Fat)
+	water, fat := m.parts(t, c, channel)
+	add(false, water.pd, water.pool)
+	add(true, fat.pd, fat.pool)
 	return out
 }
