@@ -41,7 +41,7 @@ type Panel struct {
 // Montage writes a labelled sheet of pictures as PNG: a row under the window
 // they share and a row under each picture's own, columns for the panels.
 // Orientation letters come from the grid, as DICOM's geometry does.
-func Montage(ctx context.Context, w io.Writer, title string, panels []Panel, scale Scale, shared Window, engine string) error {
+func Montage(ctx context.Context, w io.Writer, heading string, panels []Panel, scale Scale, shared Window, engine string) error {
 	if len(panels) == 0 {
 		return fmt.Errorf("montage: no picture")
 	}
@@ -55,7 +55,7 @@ func Montage(ctx context.Context, w io.Writer, title string, panels []Panel, sca
 	sheet := image.NewNRGBA(image.Rect(0, 0, width, height))
 	draw.Draw(sheet, sheet.Bounds(), image.NewUniform(paper), image.Point{}, draw.Src)
 	pen := pen{sheet}
-	pen.text(faces.title, pad, 30, ink, pen.fit(faces.title, title, width-2*pad))
+	pen.text(faces.title, pad, 30, ink, pen.fit(faces.title, heading, width-2*pad))
 	pen.text(faces.bold, pad, 52, mark, "SYNTHETIC - NOT FOR DIAGNOSIS")
 	for c, p := range panels {
 		pixels := make([]float32, p.Grid.SliceLen())
@@ -64,15 +64,18 @@ func Montage(ctx context.Context, w io.Writer, title string, panels []Panel, sca
 		}
 		x := pad + c*(side+pad)
 		for r, win := range []Window{shared, p.Own} {
+			if !signal(p.Kind) {
+				win = p.Own // no signal: the shared window means nothing to it
+			}
 			y := top + r*(label+side+pad)
-			pen.text(faces.bold, x, y+16, ink, pen.fit(faces.bold, p.Scan.Name, side))
+			pen.text(faces.bold, x, y+16, ink, pen.fit(faces.bold, title(p.Header), side))
 			line := TimingLine(p.Scan)
 			_, timing, _ := strings.Cut(line, ", ")
 			pen.text(faces.plain, x, y+32, faint, pen.fit(faces.plain, timing, side))
-			pen.text(faces.plain, x, y+48, faint, pen.fit(faces.plain, fmt.Sprintf("%s window  C %g  W %g", []string{"shared", "own"}[r], win.Center, win.Width), side))
+			pen.text(faces.plain, x, y+48, faint, pen.fit(faces.plain, fmt.Sprintf("%s window  C %g  W %g", map[bool]string{true: "shared", false: "own"}[r == 0 && signal(p.Kind)], win.Center, win.Width), side))
 			frame := image.Rect(x, y+label, x+side, y+label+side)
 			draw.Draw(sheet, frame, image.Black, image.Point{}, draw.Src)
-			img := toScale(windowed(p.Header, pixels, scale, win), p.Grid, side)
+			img := toScale(windowed(p.Header, pixels, scale.Of(p.Kind), win), p.Grid, side)
 			at := frame.Min.Add(image.Pt((side-img.Bounds().Dx())/2, (side-img.Bounds().Dy())/2))
 			draw.Draw(sheet, img.Bounds().Add(at), img, image.Point{}, draw.Src)
 			pen.letters(faces.bold, frame, p.Grid)
@@ -81,9 +84,18 @@ func Montage(ctx context.Context, w io.Writer, title string, panels []Panel, sca
 	pen.text(faces.plain, pad, height-10, faint, pen.fit(faces.plain, Caution+" Engine "+engine+".", width-2*pad))
 	return encodePNG(w, sheet, png.DefaultCompression, []Text{
 		{"Software", "voxelproof, engine " + engine},
-		{"Title", title},
+		{"Title", heading},
 		{"Warning", "SYNTHETIC. " + Caution},
 	})
+}
+
+// title names a picture: the scan, and the kind of image where it is not the
+// usual one.
+func title(h maps.Header) string {
+	if h.Kind == maps.Magnitude {
+		return h.Scan.Name
+	}
+	return h.Scan.Name + ", " + h.Kind.String()
 }
 
 // toScale resizes a picture to fit a square, true to the size of its voxels.

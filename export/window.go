@@ -33,6 +33,21 @@ type Scale struct {
 	PerSignal float64 // stored = round(PerSignal x signal)
 }
 
+// Of returns the scale of one kind of image: that of the study for signals, one
+// of its own for what is no signal.
+func (s Scale) Of(k maps.Kind) Scale {
+	switch k {
+	case maps.ADCMap:
+		return Scale{1} // 1e-6 mm2/s
+	case maps.RatioImage:
+		return Scale{20000} // -1/2..1/2
+	}
+	return s
+}
+
+// signal reports whether the kind shows signal, on the study's scale.
+func signal(k maps.Kind) bool { return k != maps.ADCMap && k != maps.RatioImage }
+
 // Stored returns the stored value of a signal, limited to 16 bits.
 func (s Scale) Stored(x float32, signed bool) int {
 	v := math.Round(float64(x) * s.PerSignal)
@@ -52,9 +67,15 @@ const brightest = 10000
 func NewScale(series []maps.Series) (Scale, error) {
 	top := 0.0
 	for _, s := range series {
+		if !signal(s.Kind) {
+			continue
+		}
 		for _, t := range s.Tissues {
 			top = math.Max(top, math.Abs(t.Value))
 		}
+	}
+	if top == 0 && len(series) > 0 && !slices.ContainsFunc(series, func(s maps.Series) bool { return signal(s.Kind) }) {
+		top = 1 // nothing but maps of other quantities
 	}
 	if !(top > 0) || math.IsInf(top, 0) {
 		return Scale{}, fmt.Errorf("no tissue gives a signal in any of the %d series", len(series))
@@ -79,13 +100,15 @@ func NewWindows(series []maps.Series, scale Scale) Windows {
 	var w Windows
 	lo, hi := 0.0, 0.0
 	for _, s := range series {
-		top := upper(s.Tissues) * 1.06 * scale.PerSignal
+		top := upper(s.Tissues) * 1.06 * scale.Of(s.Kind).PerSignal
 		bottom := 0.0
 		if s.Kind.Signed() {
 			bottom = -top
 		}
 		w.Own = append(w.Own, newWindow(bottom, top, "own window of "+s.Scan.Name))
-		lo, hi = math.Min(lo, bottom), math.Max(hi, top)
+		if signal(s.Kind) {
+			lo, hi = math.Min(lo, bottom), math.Max(hi, top)
+		}
 	}
 	w.Shared = newWindow(lo, hi, "window shared by the study")
 	return w

@@ -222,11 +222,12 @@ func (w *writer) slice(ctx context.Context, i, k int, name string, start time.Du
 		return fmt.Errorf("%s: slice %d: %w", s.Scan.Name, k+1, err)
 	}
 	file := fmt.Sprintf("slice-%04d", k+1)
+	scale := w.scale.Of(s.Kind)
 	if w.has(PNG) {
 		own := w.windows.Own[i]
 		err := w.folder.Write(path.Join("png", name, file+".png"), func(out io.Writer) error {
-			return encodePNG(out, windowed(s.Header, pixels, w.scale, own), png.BestSpeed,
-				provenance(s.Header, w.Engine, k, w.scale, fmt.Sprintf("8-bit through window C %g W %g", own.Center, own.Width)))
+			return encodePNG(out, windowed(s.Header, pixels, scale, own), png.BestSpeed,
+				provenance(s.Header, w.Engine, k, scale, fmt.Sprintf("8-bit through window C %g W %g", own.Center, own.Width)))
 		})
 		if err != nil {
 			return err
@@ -238,7 +239,7 @@ func (w *writer) slice(ctx context.Context, i, k int, name string, start time.Du
 			what += " + 32768"
 		}
 		err := w.folder.Write(path.Join("png16", name, file+".png"), func(out io.Writer) error {
-			return encodePNG(out, linear(s.Header, pixels, w.scale), png.BestSpeed, provenance(s.Header, w.Engine, k, w.scale, what))
+			return encodePNG(out, linear(s.Header, pixels, scale), png.BestSpeed, provenance(s.Header, w.Engine, k, scale, what))
 		})
 		if err != nil {
 			return err
@@ -247,9 +248,9 @@ func (w *writer) slice(ctx context.Context, i, k int, name string, start time.Du
 	if w.has(DICOM) {
 		stored := make([]int, len(pixels))
 		for n, x := range pixels {
-			stored[n] = w.scale.Stored(x, s.Kind.Signed())
+			stored[n] = scale.Stored(x, s.Kind.Signed())
 		}
-		im := dcmobj.Image{Header: s.Header, Identity: w.id, Slice: k, Scale: w.scale.PerSignal, Start: start,
+		im := dcmobj.Image{Header: s.Header, Identity: w.id, Slice: k, Scale: scale.PerSignal, Start: start,
 			Windows: []dcmobj.Window{dcmobj.Window(w.windows.Own[i]), dcmobj.Window(w.windows.Shared)}}
 		err := w.folder.Write(path.Join("dicom", name, file+".dcm"), func(out io.Writer) error { return dcmobj.WriteMR(out, im, stored) })
 		if err != nil {

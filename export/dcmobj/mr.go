@@ -244,6 +244,9 @@ func (im Image) scan(b *builder) {
 		b.number(tag.ImagingFrequency, round(a.Field*42.577478518, 6))
 	}
 	b.text(tag.ImagedNucleus, "1H")
+	if a.Agent != "" {
+		b.text(tag.ContrastBolusAgent, fit(a.Agent+" (computed)", 64))
+	}
 	if a.Averages != 0 {
 		b.number(tag.NumberOfAverages, a.Averages)
 	}
@@ -308,6 +311,15 @@ func lps(v maps.Vec) maps.Vec {
 	return out
 }
 
+// unit says what real-world values are.
+type unit struct{ explanation, label, code, meaning string }
+
+// realWorld holds the units of images that do not show signal.
+var realWorld = map[maps.Kind]unit{
+	maps.ADCMap:     {"apparent diffusion coefficient", "ADC", "um2/s", "square micrometer per second"},
+	maps.RatioImage: {"ratio of two inversion images", "RATIO", "1", "no units"},
+}
+
 // values describes pixels, windows and the real-world scale.
 func (im Image) values(b *builder) {
 	origin := "DERIVED"
@@ -351,9 +363,13 @@ func (im Image) values(b *builder) {
 		b.addVR(tag.RealWorldValueLastValueMapped, vr, []int{last})
 		b.add(tag.RealWorldValueIntercept, []float64{0})
 		b.add(tag.RealWorldValueSlope, []float64{1 / im.Scale})
-		b.text(tag.LUTExplanation, "signal relative to fully relaxed water")
-		b.text(tag.LUTLabel, "SIGNAL")
-		b.code(tag.MeasurementUnitsCodeSequence, "1", "UCUM", "no units")
+		what := realWorld[im.Kind]
+		if what.label == "" {
+			what = unit{"signal relative to fully relaxed water", "SIGNAL", "1", "no units"}
+		}
+		b.text(tag.LUTExplanation, what.explanation)
+		b.text(tag.LUTLabel, what.label)
+		b.code(tag.MeasurementUnitsCodeSequence, what.code, "UCUM", what.meaning)
 	})
 }
 

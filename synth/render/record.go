@@ -30,9 +30,22 @@ func record(p *synth.Protocol, s synth.Scan) maps.Acquisition {
 		a.Inversion = true
 		a.SpinEcho, a.GradientEcho = s.Readout != synth.ReadGradientEcho, s.Readout == synth.ReadGradientEcho
 		a.SegmentedKSpace = s.Readout == synth.ReadFastSpinEcho
+	case synth.BalancedSSFP, synth.SSFPFID, synth.SSFPEcho:
+		a.GradientEcho, a.SteadyState = true, true
+	case synth.PreparedGRE, synth.TwoInversionGRE:
+		a.GradientEcho, a.Inversion, a.Spoiled, a.MagnetPrepared = true, true, true, true
+	case synth.SpinEchoEPI:
+		a.SpinEcho, a.EchoPlanar = true, true
+	case synth.GradientEchoEPI:
+		a.GradientEcho, a.EchoPlanar = true, true
 	case synth.SaturationRecovery:
 		a.MagnetPrepared = true
 		a.SpinEcho, a.GradientEcho = s.Readout == synth.ReadSpinEcho, s.Readout == synth.ReadGradientEcho
+	}
+	a.BValue = s.Prep.BValue
+	a.FatSaturated = s.Prep.FatMethod == "saturation"
+	if s.Agent != nil {
+		a.Agent, a.AgentDose = s.Agent.Name, s.Agent.Dose
 	}
 	return a
 }
@@ -50,6 +63,12 @@ func notes(s synth.Scan) []string {
 	if s.Efficiency != 0 {
 		n = append(n, fmt.Sprintf("inversion efficiency %g", s.Efficiency))
 	}
+	if s.Prep.FatMethod != "" {
+		n = append(n, fmt.Sprintf("fat suppression of efficiency %g", s.Prep.FatEfficiency))
+	}
+	if s.Prep.BValue > 0 {
+		n = append(n, "isotropic diffusion by one ADC a tissue; fat does not diffuse; no EPI distortion at voxel level")
+	}
 	if s.Train.Length > 0 {
 		n = append(n, "contrast of the echo at the centre of k-space; the blur of the echo train is left out at voxel level")
 	}
@@ -65,7 +84,14 @@ func notes(s synth.Scan) []string {
 // weighting names the contrast by the usual ranges of TR, TE and TI (common
 // practice), in the words of DICOM's Acquisition Contrast.
 func weighting(s synth.Scan) string {
+	if s.Prep.BValue > 0 {
+		return "DIFFUSION"
+	}
 	switch s.Sequence {
+	case synth.PreparedGRE:
+		return "T1"
+	case synth.GradientEchoEPI:
+		return "T2_STAR"
 	case synth.InversionRecovery:
 		switch {
 		case s.TI >= 1.5:

@@ -294,6 +294,17 @@ scans:
   - {name: SR, sequence: saturation recovery, readout: gradient echo, TR: 800 ms, TE: 5 ms, TS: 300 ms}
   - {name: IR, sequence: inversion recovery, TR: 3 s, TE: 20 ms, TI: 500 ms, images: "magnitude, real"}
   - {name: DIR, sequence: double inversion recovery, TR: 9 s, TE: 20 ms, TI1: 3 s, TI: 400 ms}
+  - {name: FSE, sequence: fast spin echo, TR: 4 s, TE: 100 ms, train: 16, ESP: 10 ms, angles: 150 deg, fat suppression: saturation}
+  - {name: FLAIR, sequence: inversion recovery, readout: fast spin echo, TR: 9 s, TE: 100 ms, TI: 2.4 s, train: 20, ESP: 10 ms}
+  - {name: bSSFP, sequence: balanced SSFP, TR: 4 ms, flip: 40 deg}
+  - {name: FID, sequence: SSFP-FID, TR: 10 ms, TE: 4 ms, flip: 30 deg}
+  - {name: echo, sequence: SSFP-echo, TR: 10 ms, TE: 4 ms, flip: 30 deg}
+  - {name: prepared, sequence: prepared gradient echo, TR: 2300 ms, TE: 3 ms, TI: 900 ms, flip: 9 deg, train: 128, ESP: 7 ms, agent: gadobutrol}
+  - {name: ratio, sequence: two-inversion gradient echo, images: ratio, TR: 5 s, TE: 3 ms, TI: 700 ms, TI2: 2500 ms, flip: 4 deg, flip 2: 5 deg, train: 120, ESP: 7 ms}
+  - {name: DWI, sequence: spin echo EPI, TR: 4 s, TE: 80 ms, b: 1000 s/mm2, images: "trace, ADC map"}
+  - {name: BOLD, sequence: gradient echo EPI, TR: 2 s, TE: 30 ms, flip: 80 deg}
+  - {name: Dixon, sequence: spoiled gradient echo, TR: 150 ms, TE: 2.3 ms, flip: 12 deg, images: "water, fat, in phase, opposed phase"}
+  - {name: T2prep, sequence: spoiled gradient echo, TR: 1 s, TE: 2 ms, flip: 90 deg, T2 preparation: 40 ms}
   - {name: GRE, plane: coronal, sequence: spoiled gradient echo, TR: 20 ms, TE: 5 ms, flip: 20 deg, SNR: 20, SNR tissue: cortex}
 `), 0o644)
 	if err != nil {
@@ -305,8 +316,8 @@ scans:
 		t.Fatal(err)
 	}
 	files, err := filepath.Glob(out + "/dicom/*/*.dcm")
-	if err != nil || len(files) != 12 {
-		t.Fatalf("%d files, %v: want 12", len(files), err)
+	if err != nil || len(files) != 42 {
+		t.Fatalf("%d files, %v: want 42", len(files), err)
 	}
 	for _, f := range files {
 		text, _ := exec.Command("dciodvfy", "-new", f).CombinedOutput()
