@@ -37,12 +37,12 @@ func (h Hardware) String() string {
 // tooShort says which number to change, and to what.
 func tooShort(name string, have, want float64, why string) error {
 	// Rounded up to a tenth of a millisecond, or of a microsecond below one.
-	unit := 1e-4
+	per := 1e4
 	if want < 1e-3 {
-		unit = 1e-6
+		per = 1e6
 	}
 	return fmt.Errorf("%s = %s is too short: want at least %s (%s)", name, synth.Time.Format(have),
-		synth.Time.Format(math.Ceil(want/unit-1e-6)*unit), why)
+		synth.Time.Format(math.Ceil(want*per-1e-6)/per), why)
 }
 
 // Feasible reports the first timing that pulses, gradients and readouts of the

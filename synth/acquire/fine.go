@@ -211,16 +211,11 @@ func (f *fine) sampleAligned(ctx context.Context, w *work, k int, ax [3]axis) er
 	z := ax[2]
 	layer := make([]float64, z.n)
 	for _, s := range f.p.sheets(f.scan, math.Abs(z.step)/4, k) {
-		c := (f.sliceCentre(k) + s.at - z.at) / z.step
-		i := math.Floor(c)
-		if c < -1 || c >= float64(z.n) {
-			continue
-		}
-		if i >= 0 {
-			layer[int(i)] += s.weight * (i + 1 - c)
-		}
-		if int(i)+1 < z.n {
-			layer[int(i)+1] += s.weight * (c - i)
+		if i, r, ok := between((f.sliceCentre(k)+s.at-z.at)/z.step, z.n); ok {
+			layer[i] += s.weight * (1 - r)
+			if r > 0 {
+				layer[i+1] += s.weight * r
+			}
 		}
 	}
 	size := f.o.set.Grid.Size
@@ -247,6 +242,18 @@ func (f *fine) sampleAligned(ctx context.Context, w *work, k int, ax [3]axis) er
 	return nil
 }
 
+// between returns the voxel below a voxel coordinate and how far it is on the
+// way to the next. The outermost voxels reach to their far borders; beyond there
+// is nothing.
+func between(c float64, n int) (i int, r float64, ok bool) {
+	if c < -0.5 || c > float64(n)-0.5 {
+		return 0, 0, false
+	}
+	c = math.Min(math.Max(c, 0), float64(n-1))
+	i = int(c)
+	return i, c - float64(i), true
+}
+
 // tap is one voxel's weight in one fine sample.
 type tap struct {
 	to, from int
@@ -266,16 +273,13 @@ func (a axis) taps(m int, step, fov float64) []tap {
 	for i := range m {
 		for wrap := from; wrap <= to; wrap++ {
 			x := (float64(i)-float64(m-1)/2)*step + float64(wrap)*fov
-			c := (x - a.at) / a.step
-			lo := math.Floor(c)
-			if c <= -1 || c >= float64(a.n) {
+			lo, r, ok := between((x-a.at)/a.step, a.n)
+			if !ok {
 				continue
 			}
-			if lo >= 0 {
-				out = append(out, tap{i, int(lo), float32(lo + 1 - c)})
-			}
-			if int(lo)+1 < a.n && c > lo {
-				out = append(out, tap{i, int(lo) + 1, float32(c - lo)})
+			out = append(out, tap{i, lo, float32(1 - r)})
+			if r > 0 {
+				out = append(out, tap{i, lo + 1, float32(r)})
 			}
 		}
 	}
@@ -307,23 +311,16 @@ func (f *fine) upsample(w *work, p []float32, ax [3]axis) []float32 {
 		at   int32
 		a, b float32
 	}
-	// Samples outside the maps take two weights of 0.
+	// Samples outside the maps keep two weights of 0.
 	pairs := make([]pair, mx)
 	for _, t := range u.taps(mx, f.step[0], 0) {
-		q := &pairs[t.to]
-		switch {
-		case q.a == 0 && q.b == 0 && t.from+1 < u.n:
+		if q := &pairs[t.to]; q.a == 0 && q.b == 0 {
 			q.at, q.a = int32(t.from), t.weight
-		case q.a == 0 && q.b == 0: // the last voxel has none after it
-			q.at, q.b = int32(max(t.from-1, 0)), t.weight
-			if u.n == 1 {
-				q.a, q.b = t.weight, 0
-			}
-		default:
+		} else {
 			q.b = t.weight
 		}
 	}
-	last := max(u.n-1, 0)
+	last := u.n - 1
 	for y := range my {
 		row := rows[y*u.n:][:u.n]
 		dst := out[y*mx:][:mx]
@@ -405,15 +402,19 @@ func (f *fine) run(w *work, c, d maps.Vec, to int, weight float32) {
 	for i := int(math.Ceil(first)); float64(i) <= last; i++ {
 		var base [3]int
 		var r [3]float32
+		outside := false
 		for a := range 3 {
-			x := c[a] + float64(i)*d[a]
-			l := math.Floor(x)
-			base[a], r[a] = int(l), float32(x-l)
+			l, x, ok := between(c[a]+float64(i)*d[a], size[a])
+			if !ok {
+				outside = true
+				break
+			}
+			base[a], r[a] = l, float32(x)
 		}
-		inside := true
-		for a := range 3 {
-			inside = inside && base[a] >= 0 && base[a]+1 < size[a]
+		if outside {
+			continue
 		}
+		inside := base[0]+1 < size[0] && base[1]+1 < size[1] && base[2]+1 < size[2]
 		start := (base[2]*size[1]+base[1])*size[0] + base[0]
 		if inside && f.o.label != nil && !f.o.fields && f.o.texture == nil {
 			// Most places lie among eight voxels of one tissue or of none.
@@ -438,7 +439,7 @@ func (f *fine) run(w *work, c, d maps.Vec, to int, weight float32) {
 					s = [2]int{1, size[0]}[a]
 				}
 				b := base[a] + corner>>a&1
-				if b < 0 || b >= size[a] {
+				if b >= size[a] {
 					ok = false
 					break
 				}
