@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"math"
 	"math/rand/v2"
 	"os"
 	"path/filepath"
@@ -14,6 +15,7 @@ import (
 	"voxelproof/export"
 	"voxelproof/maps"
 	"voxelproof/synth"
+	"voxelproof/synth/acquire"
 	"voxelproof/synth/library"
 	"voxelproof/synth/render"
 )
@@ -32,6 +34,7 @@ type Synth struct {
 	Fresh    bool   // a random namespace instead of the fixed one
 	Site     string // namespace of the identities
 	Original bool
+	Level    string // "voxel" (default): the maps' own voxels; "acquired": as scanned
 }
 
 // Made tells what was written.
@@ -190,15 +193,26 @@ func (s Synth) write(ctx context.Context, f *export.Folder, protocol *synth.Prot
 		req.Namespace = "voxelproof"
 	}
 	var tickets strings.Builder
+	object, make, err := s.maker(l)
+	if err != nil {
+		return nil, joinDiscard(err, f)
+	}
 	for i := range protocol.Scans {
-		series, err := render.Series(l.Set, protocol, i)
+		series, err := make(protocol, i)
 		if err != nil {
 			return nil, joinDiscard(err, f)
 		}
 		for _, one := range series {
 			req.Series = append(req.Series, one)
 			req.Requests = append(req.Requests, fmt.Sprintf("field: %g T\n%s", protocol.Field, protocol.Scans[i].Canonical()))
-			tickets.WriteString(ticket(one.Header))
+			if s.Level != acquired {
+				tickets.WriteString(voxelTicket(one.Header))
+			}
+		}
+	}
+	if s.Level == acquired {
+		if err := acquiredTickets(&req, &tickets, protocol, l); err != nil {
+			return nil, joinDiscard(err, f)
 		}
 	}
 	req.Extra["ticket.txt"] = []byte(tickets.String())
@@ -209,7 +223,11 @@ func (s Synth) write(ctx context.Context, f *export.Folder, protocol *synth.Prot
 	if len(req.Formats) == 0 && len(req.Slices) > 0 {
 		req.Formats = []export.Format{export.PNG, export.PNG16, export.DICOM}
 	}
-	if err := s.montages(&req, l, protocol); err != nil {
+	montages := func() error { return s.montages(&req, l, protocol) }
+	if object != nil {
+		montages = func() error { return acquiredMontages(&req, protocol, object, centre(l)) }
+	}
+	if err := montages(); err != nil {
 		return nil, joinDiscard(err, f)
 	}
 	m, err := export.Write(ctx, f, req)
@@ -221,6 +239,71 @@ func (s Synth) write(ctx context.Context, f *export.Folder, protocol *synth.Prot
 		out.Series = append(out.Series, MadeSeries{q.Number, q.Scan, q.Kind, q.Slices, export.TimingLine(req.Series[i].Scan)})
 	}
 	return out, nil
+}
+
+// Levels of images.
+const (
+	voxel    = "voxel"
+	acquired = "acquired"
+)
+
+// maker returns what makes the series of a scan at the level asked for, and the
+// object that keeps the transforms of the acquired level.
+func (s Synth) maker(l *Loaded) (*acquire.Object, func(*synth.Protocol, int) ([]maps.Series, error), error) {
+	switch s.Level {
+	case "", voxel:
+		return nil, func(p *synth.Protocol, i int) ([]maps.Series, error) { return render.Series(l.Set, p, i) }, nil
+	case acquired:
+		o, err := acquire.NewObject(l.Set)
+		if err != nil {
+			return nil, nil, err
+		}
+		return o, func(p *synth.Protocol, i int) ([]maps.Series, error) { return o.Series(p, i, acquire.Options{}) }, nil
+	}
+	return nil, nil, usagef("level %q: want voxel or acquired", s.Level)
+}
+
+// acquiredMontages adds one labelled sheet per plane: the slice of each series
+// next to the focus, and one slice through it in the planes that were not
+// scanned.
+func acquiredMontages(req *export.Request, p *synth.Protocol, o *acquire.Object, focus maps.Vec) error {
+	for plane := maps.Axial; plane <= maps.Sagittal; plane++ {
+		q := export.MontageRequest{Title: fmt.Sprintf("%s, %s, as acquired", p.Name, plane)}
+		for i, scan := range p.Scans {
+			var series []maps.Series
+			for _, one := range req.Series {
+				if one.Number == i+1 && one.Plane == plane {
+					series = append(series, one)
+				}
+			}
+			if series == nil {
+				turned := *p
+				turned.Scans = append([]synth.Scan(nil), p.Scans...)
+				scan.Plane, scan.Geometry.Slices, scan.Geometry.PhaseAxis, scan.Geometry.Angles = plane, 1, "", [3]float64{}
+				for a, c := range o.Centre() {
+					scan.Geometry.Offset[a] = focus[a] - c
+				}
+				// Beside the focus the head lies in the middle of the field of view.
+				for a := range 3 {
+					if normal := [3]int{2, 1, 0}[plane]; a != normal {
+						scan.Geometry.Offset[a] = 0
+					}
+				}
+				turned.Scans[i] = scan
+				var err error
+				if series, err = o.Series(&turned, i, acquire.Options{}); err != nil {
+					return err
+				}
+			}
+			for _, one := range series {
+				k := int(math.Round(one.Grid.Voxel(focus)[2]))
+				q.Series = append(q.Series, one)
+				q.Slices = append(q.Slices, min(max(k, 0), one.Grid.Size[2]-1))
+			}
+		}
+		req.Montages[fmt.Sprintf("montage-%s.png", plane)] = q
+	}
+	return nil
 }
 
 // montages adds one labelled sheet per plane, through the middle of the object
@@ -303,11 +386,12 @@ func sliceList(text string, series []maps.Series) ([]int, error) {
 	return out, nil
 }
 
-// Demo is Synth with everything chosen.
+// Demo is Synth with everything chosen: five weightings of the head at the
+// acquired level.
 func Demo(out string) Synth {
 	return Synth{
-		Object:   Object{Phantom: "head", Seed: 1, Voxel: 1.4, Findings: []string{"plaques", "infarct", "mass", "lacune"}},
-		Protocol: "demo", Out: out, Slices: "22-158/4", Replace: true,
+		Object:   Object{Phantom: "head", Seed: 1, Voxel: 1.5, Findings: []string{"plaques", "infarct", "mass", "lacune"}},
+		Protocol: "demo", Level: acquired, Out: out, Replace: true,
 		Formats: []export.Format{export.PNG, export.DICOM},
 	}
 }

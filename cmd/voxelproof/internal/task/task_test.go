@@ -128,7 +128,7 @@ scans:
 // each engine version: when they change, bump render.EngineVersion and add its
 // line.
 var golden = map[string]string{
-	"1": "cc3570ee14858a6ac1c06d3d17f6c609ed60b8dcf9bb83b3c7f36784ebef084c",
+	"1": "237d237918655ce52c67b758277d04685905c854a20f9756b96030db006db0d2",
 }
 
 func TestGoldenFiles(t *testing.T) {
@@ -150,7 +150,7 @@ func TestGoldenFiles(t *testing.T) {
 func small(t *testing.T, o Object, slices string) *export.Manifest {
 	t.Helper()
 	s := Demo(filepath.Join(t.TempDir(), "out"))
-	s.Object, s.Slices, s.Formats = o, slices, []export.Format{export.PNG, export.PNG16, export.DICOM}
+	s.Object, s.Slices, s.Level, s.Formats = o, slices, voxel, []export.Format{export.PNG, export.PNG16, export.DICOM}
 	if _, err := s.Run(t.Context(), nil); err != nil {
 		t.Fatal(err)
 	}

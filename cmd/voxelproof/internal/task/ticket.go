@@ -1,17 +1,50 @@
 package task
 
 import (
+	"encoding/json"
 	"fmt"
 	"math"
 	"strings"
 
 	"voxelproof/export"
 	"voxelproof/maps"
+	"voxelproof/synth"
+	"voxelproof/synth/ticket"
 )
 
-// ticket states one series in plain text: its numbers, what each tissue will
+// acquiredTickets writes the tickets of scans at the acquired level, as text and
+// as JSON.
+func acquiredTickets(req *export.Request, text *strings.Builder, p *synth.Protocol, l *Loaded) error {
+	var tissues []maps.Tissue
+	if m := l.Set.Mixture; m != nil {
+		for i, v := range m.Volumes() {
+			if v > 0 {
+				tissues = append(tissues, m.Tissues[i])
+			}
+		}
+	}
+	fmt.Fprintf(text, "SYNTHETIC. %s\n\n", export.Caution)
+	var all []ticket.Ticket
+	for i := range p.Scans {
+		t, err := ticket.New(p, i, tissues)
+		if err != nil {
+			return err
+		}
+		all = append(all, t)
+		text.WriteString(t.Text())
+		text.WriteString("\n\n")
+	}
+	data, err := json.MarshalIndent(all, "", "  ")
+	if err != nil {
+		return err
+	}
+	req.Extra["ticket.json"] = append(data, '\n')
+	return nil
+}
+
+// voxelTicket states one series in plain text: its numbers, what each tissue will
 // give, and what the model leaves out.
-func ticket(h maps.Header) string {
+func voxelTicket(h maps.Header) string {
 	var b strings.Builder
 	a := h.Scan
 	fmt.Fprintf(&b, "%s (%s)\n%s\n", a.Name, h.Kind, strings.Repeat("=", len(a.Name)+len(h.Kind.String())+3))
