@@ -248,8 +248,6 @@ var keys = []key{
 	flag("single shot", "the whole picture from one train", func(s *Scan) *bool { return &s.Train.SingleShot }),
 	word("view order", "order of the phase-encode lines", []string{"linear", "centre-out"}, func(s *Scan) *string { return &s.Train.Order }),
 	count("pulse", "excitation whose echo is recorded before the steady state", func(s *Scan) *int { return &s.Pulse }),
-	quantity("RF spoiling", &Angle, "quadratic phase increment; none = ideal spoiling", func(s *Scan) *float64 { return &s.SpoilIncrement }),
-	count("profile samples", "points of the slice profile over which the flip angle is averaged", func(s *Scan) *int { return &s.ProfileSamples }),
 
 	quantity("T2 preparation", &Time, "tip-down to tip-up", func(s *Scan) *float64 { return &s.Prep.T2Prep }),
 	quantity("T2 preparation delay", &Time, "tip-up to excitation", func(s *Scan) *float64 { return &s.Prep.T2PrepDelay }),

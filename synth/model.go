@@ -53,9 +53,6 @@ func NewModel(field float64, s Scan) (*Model, error) {
 	if s.Prep.BValue > 0 || m.dixon() {
 		m.channels = 2
 	}
-	if k := unmodelled(s); k != "" {
-		return nil, fmt.Errorf("scan %q: %s is not modelled at this level: leave it out", s.Name, k)
-	}
 	build, ok := builders[s.Sequence]
 	if !ok {
 		return nil, fmt.Errorf("scan %q: sequence %q: no signal model", s.Name, s.Sequence)
@@ -64,20 +61,6 @@ func NewModel(field float64, s Scan) (*Model, error) {
 		return nil, fmt.Errorf("scan %q: %w", s.Name, err)
 	}
 	return m, nil
-}
-
-// unmodelled names the first stated setting that no signal model here takes
-// into account, since a setting must never be ignored in silence.
-func unmodelled(s Scan) string {
-	for _, k := range keys {
-		switch k.name {
-		case "RF spoiling", "profile samples":
-			if k.get(&s) != "" {
-				return k.name
-			}
-		}
-	}
-	return ""
 }
 
 // builders choose the signal equation of each sequence.

@@ -59,15 +59,9 @@ type Scan struct {
 	Plane    maps.Plane
 	Seed     uint64
 
-	// SpoilIncrement is the quadratic phase increment of RF spoiling in rad;
-	// 0 = ideal spoiling.
-	SpoilIncrement float64
 	// Pulse is the number of the excitation whose echo is recorded before the
 	// steady state; 0 = steady state.
 	Pulse int
-	// ProfileSamples averages the flip angle over that many points of the slice
-	// profile in 2D gradient echo and fast spin echo; 0 or 1 = nominal angle.
-	ProfileSamples int
 }
 
 // Train describes an echo train or a train of gradient-echo readouts.
