@@ -5,6 +5,7 @@ import (
 	"math/cmplx"
 
 	"voxelproof/maps"
+	"voxelproof/synth/signal"
 )
 
 // PoolSignal is what one pool of a voxel gives, echo by echo of a train (one
@@ -15,6 +16,12 @@ type PoolSignal struct {
 	// spectrum is left out: it goes on turning during the readout, which only the
 	// acquisition knows.
 	Echoes []complex128
+	// Turned is the time for which the spectrum of fat has turned at the echo, in
+	// s: the echo time of a free induction, 0 at a spin echo.
+	Turned float64
+	// Shift, when not 0, says that this is a single line of fat's spectrum, that
+	// many Hz from water, with its phase at the echo included.
+	Shift float64
 }
 
 // Pools returns the signals of water and of fat of a tissue in one channel, for
@@ -22,9 +29,10 @@ type PoolSignal struct {
 func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
 	var out []PoolSignal
 	tm := m.timing(c)
-	turn := complex128(1)
+	turn, turned := complex128(1), 0.0
 	if m.dephases {
 		te := m.te(channel)
+		turned = te
 		turn = cmplx.Rect(sinc(c.Gradient*te), 2*math.Pi*c.B0*te)
 	}
 	add := func(fat bool, pd float64, p maps.Pool) {
@@ -33,13 +41,24 @@ func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
 		}
 		values := []float64{0}
 		switch {
+		case m.offset != nil && fat:
+			for _, peak := range signal.FatPeaks(m.field) {
+				v := complex(pd*peak.Share, 0) * m.offset(p, tm, c.B0+peak.Shift)
+				out = append(out, PoolSignal{Fat: true, Echoes: []complex128{v}, Shift: peak.Shift})
+			}
+			return
 		case m.offset != nil:
-			v := m.offset(p, tm, c.B0)
-			out = append(out, PoolSignal{fat, []complex128{complex(pd, 0) * v}})
+			out = append(out, PoolSignal{Echoes: []complex128{complex(pd, 0) * m.offset(p, tm, c.B0)}})
 			return
 		case m.train != nil:
 			values = make([]float64, m.scan.Train.Length)
 			m.train(values, p, tm)
+		case m.scan.Sequence == PreparedGRE:
+			train := m.scan.readTrain()
+			values = make([]float64, train.Length)
+			for i := range values {
+				values[i] = signal.PreparedGRE(p, tm, train, i+1)
+			}
 		default:
 			values[0] = m.pool(p, tm, channel)
 		}
@@ -47,7 +66,7 @@ func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
 		for i, v := range values {
 			echoes[i] = complex(pd*v, 0) * turn
 		}
-		out = append(out, PoolSignal{fat, echoes})
+		out = append(out, PoolSignal{Fat: fat, Echoes: echoes, Turned: turned})
 	}
 	water, fat := m.parts(t, c, channel)
 	add(false, water.pd, water.pool)

@@ -1,7 +1,6 @@
 package acquire
 
 import (
-	"fmt"
 	"math"
 	"math/cmplx"
 
@@ -50,13 +49,15 @@ type poolEchoes struct {
 	fat    bool
 	pool   maps.Pool
 	echoes []complex128
+	turned float64 // s, for which the spectrum of fat has turned at the echo
+	shift  float64 // Hz of a single line, its phase at the echo included; 0 = the whole spectrum
 }
 
 // pools splits the signal of a tissue into water and fat.
 func (x *Signals) pools(t maps.Tissue, c synth.Condition, channel int) []poolEchoes {
 	var out []poolEchoes
 	for _, s := range x.model.Pools(t, c, channel) {
-		p := poolEchoes{fat: s.Fat, pool: t.Pool, echoes: s.Echoes}
+		p := poolEchoes{fat: s.Fat, pool: t.Pool, echoes: s.Echoes, turned: s.Turned, shift: s.Shift}
 		if s.Fat {
 			p.pool = t.Fat
 		}
@@ -99,17 +100,24 @@ func (x *Signals) decay(p maps.Pool, t float64) float64 {
 	return math.Exp(-float64(t*r2) - float64(math.Abs(t)*math.Max(0, 1/t2s-r2)))
 }
 
+// echo returns what the echo with number e (from 0) of the lines records.
+func (x *Signals) echo(echoes []complex128, e int) complex128 {
+	switch {
+	case len(echoes) == 1:
+		return echoes[0]
+	case x.p.Lines.Train == 1: // the train runs along another axis
+		return echoes[max(x.scan.Train.Echo, 1)-1]
+	}
+	return echoes[min(e, len(echoes)-1)]
+}
+
 // amplitudes returns what each phase line records of a pool's echoes, 0 where
 // no line is recorded.
 func (x *Signals) amplitudes(echoes []complex128) []complex128 {
 	out := make([]complex128, x.p.Matrix.Phase)
 	for j, e := range x.p.Lines.Echo {
-		switch {
-		case e < 0:
-		case len(echoes) == 1:
-			out[j] = echoes[0]
-		default:
-			out[j] = echoes[min(e, len(echoes)-1)]
+		if e >= 0 {
+			out[j] = x.echo(echoes, e)
 		}
 	}
 	return out
@@ -130,18 +138,18 @@ func (x *Signals) terms(p poolEchoes, lines []complex128, n int) []kspace.Term {
 	if !p.fat {
 		return []kspace.Term{{Line: lines, Read: read}}
 	}
-	te := 0.0
-	if x.gradientEcho() {
-		te = x.scan.TE
+	te, peaks := p.turned, x.peaks
+	if p.shift != 0 {
+		te, peaks = 0, []signal.Peak{{Shift: p.shift, Share: 1}}
 	}
 	var out []kspace.Term
 	if x.p.LineTime == 0 {
 		for i := range read {
-			read[i] *= x.spectrum(te + x.readTime(i, n))
+			read[i] *= spectrum(peaks, te+x.readTime(i, n))
 		}
 		return []kspace.Term{{Line: lines, Read: read}}
 	}
-	for _, pk := range x.peaks { // each peak has its own shift along phase
+	for _, pk := range peaks { // each peak has its own shift along phase
 		t := kspace.Term{Line: make([]complex128, len(lines)), Read: make([]complex128, n)}
 		for j := range lines {
 			t.Line[j] = lines[j] * turn(pk.Shift*(te+x.lineTime(j))) * complex(pk.Share, 0)
@@ -154,10 +162,10 @@ func (x *Signals) terms(p poolEchoes, lines []complex128, n int) []kspace.Term {
 	return out
 }
 
-// spectrum is the phasor of the fat peaks t seconds after they were in phase.
-func (x *Signals) spectrum(t float64) complex128 {
+// spectrum is the phasor of peaks t seconds after they were in phase.
+func spectrum(peaks []signal.Peak, t float64) complex128 {
 	var sum complex128
-	for _, pk := range x.peaks {
+	for _, pk := range peaks {
 		sum += turn(pk.Shift*t) * complex(pk.Share, 0)
 	}
 	return sum
@@ -192,8 +200,8 @@ func (x *Signals) slopeTerms(t maps.Tissue, channel, n int) []kspace.Term {
 
 // Widths returns the full width at half maximum of the point spread of a
 // tissue's water (or fat, if it has no water) in acquired pixels, along the
-// readout and along phase, the filter included.
-func (x *Signals) Widths(t maps.Tissue) (read, phase float64, err error) {
+// readout and along phase, the filter included; 0 of a tissue without signal.
+func (x *Signals) Widths(t maps.Tissue) (read, phase float64) {
 	var best poolEchoes
 	for _, p := range x.pools(t, synth.Condition{}, 0) {
 		if best.echoes == nil || !p.fat {
@@ -201,7 +209,7 @@ func (x *Signals) Widths(t maps.Tissue) (read, phase float64, err error) {
 		}
 	}
 	if best.echoes == nil {
-		return 0, 0, fmt.Errorf("tissue %q gives no signal", t.Name)
+		return 0, 0
 	}
 	n := x.p.Matrix.Read
 	r, l := make([]complex128, n), x.amplitudes(best.echoes)
@@ -218,5 +226,5 @@ func (x *Signals) Widths(t maps.Tissue) (read, phase float64, err error) {
 	if x.scan.Sampling.Homodyne {
 		kspace.HomodyneLines(l, x.p.Lines.First)
 	}
-	return kspace.Width(r), kspace.Width(l), nil
+	return kspace.Width(r), kspace.Width(l)
 }

@@ -1,6 +1,8 @@
 package acquire
 
 import (
+	"math/cmplx"
+
 	"voxelproof/maps"
 	"voxelproof/synth"
 	"voxelproof/synth/kspace"
@@ -151,7 +153,7 @@ func (v *voxels) tissue(dst []share, t maps.Tissue, c synth.Condition, fraction 
 	for ch := range v.x.model.Channels() {
 		for _, p := range v.x.pools(t, c, ch) {
 			for e := range v.echoes {
-				s := p.echoes[min(e, len(p.echoes)-1)] * complex(fraction, 0)
+				s := v.x.echo(p.echoes, e) * complex(fraction, 0)
 				if v.times != nil {
 					s *= complex(v.x.decay(p.pool, v.times[e]), 0)
 				}
@@ -178,6 +180,7 @@ func (v *voxels) weights(read int) [][][]kspace.Term {
 	n := v.x.p.Matrix.Phase
 	for ch := range out {
 		out[ch] = make([][]kspace.Term, v.components())
+		typical := v.x.typicalFat(ch)
 		for _, fat := range []bool{false, true} {
 			for e := range v.echoes {
 				lines := make([]complex128, n)
@@ -193,7 +196,7 @@ func (v *voxels) weights(read int) [][][]kspace.Term {
 					f := v.low + float64(b)*v.width
 					// No relaxation within the readout: it is not the same for every
 					// voxel of the component.
-					terms := v.x.terms(poolEchoes{fat: fat}, append([]complex128(nil), lines...), read)
+					terms := v.x.terms(poolEchoes{fat: fat, turned: typical.turned, shift: typical.shift}, append([]complex128(nil), lines...), read)
 					for _, t := range terms {
 						for j := range t.Line {
 							t.Line[j] *= turn(f * v.x.lineTime(j))
@@ -220,4 +223,17 @@ func timesI(terms []kspace.Term) []kspace.Term {
 		}
 	}
 	return out
+}
+
+// typicalFat tells how the spectrum of fat has turned in a channel. Where a
+// sequence gives every line of it apart, all are shifted like the main one.
+func (x *Signals) typicalFat(channel int) poolEchoes {
+	p := maps.Pool{T1: 0.3, T2: 0.07, T2Star: 0.05}
+	var main poolEchoes
+	for i, q := range x.pools(maps.Tissue{PD: 1, FatFraction: 1, Pool: p, Fat: p, ADC: 1e-3}, synth.Condition{}, channel) {
+		if i == 0 || cmplx.Abs(q.echoes[0]) > cmplx.Abs(main.echoes[0]) {
+			main = q
+		}
+	}
+	return main
 }

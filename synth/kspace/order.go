@@ -13,6 +13,7 @@ type Lines struct {
 	Echo     []int // per line, the 0-based echo that records it; -1 = not recorded
 	Recorded int   // lines that the echo train really records: (N - First) / acceleration
 	Shots    int   // trains needed
+	Train    int   // echoes that are told apart
 	Wraps    bool  // late echoes lie beside early ones at some line well inside k-space
 }
 
@@ -78,6 +79,7 @@ func Order(n int, o OrderOptions) (Lines, error) {
 		l.Shots = 1
 		train = min(train, l.Recorded)
 	}
+	l.Train = train
 	l.assign(train, o)
 	return l, nil
 }

@@ -18,7 +18,7 @@ func (t Ticket) Text() string {
 	if t.Protocol != "" {
 		line("protocol", "%s", t.Protocol)
 	}
-	line("level", "%s", t.Level)
+	line("level", "%s; numbers are for the %s image", t.Level, t.Image)
 	var set []string
 	for _, s := range t.Settings {
 		set = append(set, s.Name+" "+s.Value)

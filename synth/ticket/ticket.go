@@ -22,6 +22,7 @@ type Ticket struct {
 	Protocol string    `json:"protocol,omitempty"`
 	Scan     string    `json:"scan"`
 	Sequence string    `json:"sequence"`
+	Image    string    `json:"image"` // kind of image that signals are given for, the first of the scan
 	Field    float64   `json:"field_T"`
 	Level    string    `json:"level"` // "acquired" or "voxel"
 	Settings []Setting `json:"settings"`
@@ -119,7 +120,6 @@ type Options struct {
 	Hardware acquire.Hardware
 	Pairs    [][2]string // tissues to compare; nil = the usual ones that are there
 	Slices   int         // where the protocol leaves it to the object
-	Kind     maps.Kind   // image kind that signals are given for
 }
 
 // usual names the pairs that are compared when nobody names any.
@@ -150,8 +150,9 @@ func NewWith(p *synth.Protocol, i int, tissues []maps.Tissue, opt Options) (Tick
 	if opt.Hardware == (acquire.Hardware{}) {
 		opt.Hardware = acquire.Typical()
 	}
-	t := Ticket{Protocol: p.Name, Scan: s.Name, Sequence: string(s.Sequence), Field: p.Field, Level: "voxel", Settings: settings(s)}
-	if err := t.signals(m, tissues, opt.Kind); err != nil {
+	kind := s.Complete().Images[0]
+	t := Ticket{Image: kind.String(), Protocol: p.Name, Scan: s.Name, Sequence: string(s.Sequence), Field: p.Field, Level: "voxel", Settings: settings(s)}
+	if err := t.signals(m, tissues, kind); err != nil {
 		return Ticket{}, err
 	}
 	if !acquire.Applies(s) {
@@ -204,9 +205,6 @@ func settings(s synth.Scan) []Setting {
 
 // signals fills the noise-free signal of every tissue.
 func (t *Ticket) signals(m *synth.Model, tissues []maps.Tissue, k maps.Kind) error {
-	if k == maps.Magnitude {
-		k = m.Kinds()[0]
-	}
 	ch := make([]complex128, m.Channels())
 	for _, tissue := range tissues {
 		if err := m.Needs(tissue); err != nil {
@@ -235,7 +233,7 @@ func (t *Ticket) voxelLevel(s synth.Scan, tissues []maps.Tissue) error {
 	if sigma > 0 {
 		t.Noise = &Noise{sigma, 1, source}
 		for i := range t.Tissues {
-			t.Tissues[i].snr(sigma, 1, false)
+			t.Tissues[i].snr(sigma, 1, s.Complete().Images[0])
 		}
 	}
 	t.LeftOut = []string{
@@ -244,11 +242,21 @@ func (t *Ticket) voxelLevel(s synth.Scan, tissues []maps.Tissue) error {
 	return nil
 }
 
-// snr fills the ratios of a tissue. Signed pictures have no magnitude bias.
-func (t *Tissue) snr(sigma float64, coils int, signed bool) {
+// snr fills the ratios of a tissue. Signed pictures have no magnitude bias;
+// maps computed from several pictures have no ratio of their own.
+func (t *Tissue) snr(sigma float64, coils int, k maps.Kind) {
+	switch k {
+	case maps.ADCMap, maps.RatioImage:
+		return
+	case maps.WaterImage, maps.FatImage: // half the sum of two pictures
+		sigma /= math.Sqrt2
+		coils = 0
+	case maps.Real:
+		coils = 0
+	}
 	t.SNR = math.Abs(t.Signal) / sigma
 	t.Measured = t.SNR
-	if !signed {
+	if coils > 0 {
 		mean, variance := noise.Moments(t.SNR, coils)
 		t.Measured = mean / math.Sqrt(variance)
 	}
@@ -277,10 +285,12 @@ func (t *Ticket) predict(field float64, s synth.Scan, x *acquire.Prescription, t
 		return err
 	}
 	for i, tissue := range tissues {
-		t.Tissues[i].snr(t.Noise.Sigma, x.Coils, s.Sampling.Homodyne)
-		if t.Tissues[i].Read, t.Tissues[i].Phase, err = sig.Widths(tissue); err != nil {
-			return err
+		kind := s.Complete().Images[0]
+		if s.Sampling.Homodyne {
+			kind = maps.Real // its noise is that of one real number
 		}
+		t.Tissues[i].snr(t.Noise.Sigma, x.Coils, kind)
+		t.Tissues[i].Read, t.Tissues[i].Phase = sig.Widths(tissue)
 	}
 	return nil
 }
