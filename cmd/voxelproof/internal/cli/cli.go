@@ -36,6 +36,7 @@ type grammar struct {
 	Demo    demoCmd    `cmd:"" help:"Make a first set of proofs of the built-in head: pictures, DICOM, ticket, manifest."`
 	Phantom phantomCmd `cmd:"" help:"List tissues and phantoms, build maps from them."`
 	Maps    mapsCmd    `cmd:"" help:"Describe, check, build and convert maps."`
+	Signal  signalCmd  `cmd:"" help:"Calculate signals, contrast, nulls and best timings of tissues."`
 	Synth   synthCmd   `cmd:"" help:"Make the images of a protocol from maps or a phantom."`
 }
 
