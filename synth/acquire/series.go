@@ -128,7 +128,7 @@ type scanner struct {
 type cacheKey struct {
 	plane    maps.Plane
 	geometry synth.Geometry
-	scan     int // of an object whose components hold for one scan only
+	centre   maps.Vec
 }
 
 // encoded holds the k-space of an object's components at one geometry, slice by
@@ -188,7 +188,7 @@ func (r *scanner) prepare(opt Options) error {
 func (o *Object) encode(r *scanner, ex expander, opt Options) (*encoded, error) {
 	g := r.scan.Geometry
 	g.Display, g.Reverse, g.Slices, g.PhaseAxis = 0, false, r.p.Slices, r.p.PhaseAxis
-	key := cacheKey{plane: r.scan.Plane, geometry: g}
+	key := cacheKey{plane: r.scan.Plane, geometry: g, centre: r.centre}
 	limit := opt.MaxMemory
 	if limit == 0 {
 		limit = 2 << 30

@@ -268,3 +268,38 @@ func TestTexture(t *testing.T) {
 		t.Errorf("texture 1 multiplies the picture by %.5f: want %.5f", got, want)
 	}
 }
+
+// In EPI a field offset moves everything along phase by offset x line time x
+// lines, and a spread of offsets within a voxel's neighbourhood stretches it.
+func TestOffResonanceInEPI(t *testing.T) {
+	g := maps.NewGrid([3]int{48, 48, 3}, [3]float64{2, 2, 1})
+	set := scene(t, g, 1, []maps.Tissue{fluid}, func(w maps.Vec) int {
+		if math.Abs(w[0]) < 16 && math.Abs(w[1]) < 16 {
+			return 0
+		}
+		return -1
+	})
+	s := spinEcho()
+	s.Sequence, s.TE, s.TR, s.Sampling.Bandwidth = synth.SpinEchoEPI, 0.1, 3, 2000
+	s.Train.Spacing = 0.7e-3
+	s.Images = []maps.Kind{maps.Magnitude}
+	plain := picture(t, object(t, set), 1.5, s, quiet)
+	b0 := maps.NewVolume(g)
+	for n := range b0.Data {
+		b0.Data[n] = 60
+		if g.IJK(n)[1] > 24 { // a second value, so that bands are mixed
+			b0.Data[n] = 64.5
+		}
+	}
+	if err := set.Add(maps.B0, b0); err != nil {
+		t.Fatal(err)
+	}
+	moved := picture(t, object(t, set), 1.5, s, quiet)
+	half := tissueSignal(t, 1.5, s, fluid) / 2
+	for row, hz := range map[int]float64{24: 64.5, 40: 60} { // rows run from anterior to posterior
+		a, b := pixelsOf(plain, 0, row), pixelsOf(moved, 0, row)
+		if d := crossing(b, half, 0, 63) - crossing(a, half, 0, 63); math.Abs(d-hz*0.7e-3*64) > 0.1 {
+			t.Errorf("row %d: %g Hz moves the edge %.3f px along phase: want %.3f", row, hz, d, hz*0.7e-3*64)
+		}
+	}
+}

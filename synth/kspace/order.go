@@ -14,6 +14,7 @@ type Lines struct {
 	Recorded int   // lines that the echo train really records: (N - First) / acceleration
 	Shots    int   // trains needed
 	Train    int   // echoes that are told apart
+	Natural  int   // 1-based echo that would record the centre without moving bands
 	Wraps    bool  // late echoes lie beside early ones at some line well inside k-space
 }
 
@@ -119,6 +120,7 @@ func (l *Lines) assign(train int, o OrderOptions) {
 		}
 	}
 	turn := want - at
+	l.Natural = at + 1
 	l.Wraps = turn < -1 || turn > 1
 	l.Echo = make([]int, l.N)
 	for i := range l.Echo {

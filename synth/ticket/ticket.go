@@ -363,7 +363,7 @@ func (t *Ticket) warn(s synth.Scan, x *acquire.Prescription) {
 	}
 	if x.Lines.Wraps {
 		add("the effective echo time puts late echoes beside early ones in k-space: another view order or TE = %s would not",
-			synth.Time.Format(float64(x.Lines.N/2*max(s.Train.Length, 1)/x.Lines.N)*s.Train.Spacing))
+			synth.Time.Format(math.Round(float64(x.Lines.Natural)*s.Train.Spacing*1e6)/1e6))
 	}
 	if t.Fat.Pixels >= 2 {
 		add("fat lands %.1f px (%.1f mm) off along %s: raise the bandwidth or suppress fat", t.Fat.Pixels, t.Fat.MM, t.Fat.Along)
