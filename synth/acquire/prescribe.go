@@ -230,13 +230,7 @@ func (p *Prescription) order(s synth.Scan) error {
 	return nil
 }
 
-// Normal returns the coordinate of a point along the slice normal.
-func (p *Prescription) along(axis int, v maps.Vec) float64 {
-	a := p.Axes[axis]
-	return float64(a[0]*v[0]) + float64(a[1]*v[1]) + float64(a[2]*v[2])
-}
-
-// ReadAxis and phaseAxis are the picture axes (0 across, 1 down).
+// readAxis is the picture axis of the readout: 0 across, 1 down.
 func (p *Prescription) readAxis() int {
 	if p.Rows {
 		return 1
