@@ -315,9 +315,65 @@ scans:
 	if _, err := s.Run(t.Context(), nil); err != nil {
 		t.Fatal(err)
 	}
+	validate(t, out, 42)
+}
+
+// So does what the acquired level writes: every plane and an oblique one, with
+// the acquisition's own attributes.
+func TestAcquiredProductsAreValid(t *testing.T) {
+	mapstest.Tools(t, "dciodvfy", "dcentvfy")
+	protocol := filepath.Join(t.TempDir(), "p.yaml")
+	err := os.WriteFile(protocol, []byte(`protocol: as acquired
+field: 1.5 T
+body part: HEAD
+defaults: {FOV: 240 x 240 mm, matrix: 96 x 80, slices: 3, thickness: 5 mm, gap: 1 mm, bandwidth: 300 Hz/px}
+scans:
+  - {name: axial, sequence: spin echo, TR: 500 ms, TE: 14 ms, seed: 3}
+  - {name: coronal, plane: coronal, sequence: fast spin echo, TR: 4 s, TE: 100 ms, train: 10, ESP: 10 ms, averages: 2, partial Fourier: 0.75}
+  - {name: sagittal, plane: sagittal, sequence: inversion recovery, readout: fast spin echo, TR: 9 s, TE: 100 ms, TI: 2.3 s, train: 10, ESP: 10 ms, images: "magnitude, real"}
+  - {name: oblique, tilt: 10 deg x -15 deg x 5 deg, phase axis: AP, sequence: spoiled gradient echo, TR: 300 ms, TE: 5 ms, flip: 30 deg, coils: 8, acceleration: 2}
+`), 0o644)
+	if err != nil {
+		t.Fatal(err)
+	}
+	out := filepath.Join(t.TempDir(), "out")
+	s := Synth{Object: Object{Phantom: "head", Voxel: 4, Field: 1.5}, Protocol: protocol, Level: acquired, Out: out, Formats: []export.Format{export.DICOM, export.NIfTI}}
+	if _, err := s.Run(t.Context(), nil); err != nil {
+		t.Fatal(err)
+	}
+	validate(t, out, 15)
+	// pydicom and nibabel see one geometry, and the matrix agrees with the
+	// direction of phase encoding (PS3.3 C.8.3.1: zeros in the places of the other).
+	got := mapstest.Python(t, []string{"pydicom", "nibabel", "numpy"}, `
+import sys, glob, os, numpy as np, pydicom, nibabel
+for folder in sorted(glob.glob(sys.argv[1] + "/dicom/*")):
+    ds = [pydicom.dcmread(f) for f in sorted(glob.glob(folder + "/*.dcm"))]
+    nii = nibabel.load(sys.argv[1] + "/nifti/" + os.path.basename(folder) + ".nii.gz")
+    o = np.array(ds[0].ImageOrientationPatient, float)
+    p0, p1 = (np.array(d.ImagePositionPatient, float) for d in (ds[0], ds[-1]))
+    A = np.eye(4)
+    A[:3, 0] = o[:3] * float(ds[0].PixelSpacing[1])
+    A[:3, 1] = o[3:] * float(ds[0].PixelSpacing[0])
+    A[:3, 2] = (p1 - p0) / (len(ds) - 1)
+    A[:3, 3] = p0
+    assert np.abs(np.diag([-1, -1, 1, 1]) @ A - nii.affine).max() < 1e-4, folder
+    for d in ds:
+        m = list(d.AcquisitionMatrix)
+        want = [0, 96, 80, 0] if d.InPlanePhaseEncodingDirection == "ROW" else [96, 0, 0, 80]
+        assert m == want and float(d.PixelBandwidth) == 300 and float(d.SliceThickness) == 5 and float(d.SpacingBetweenSlices) == 6, (folder, m)
+print("ok")
+`, out)
+	if strings.TrimSpace(got) != "ok" {
+		t.Error(got)
+	}
+}
+
+// validate runs the validators over the DICOM files of an output folder.
+func validate(t *testing.T, out string, count int) {
+	t.Helper()
 	files, err := filepath.Glob(out + "/dicom/*/*.dcm")
-	if err != nil || len(files) != 42 {
-		t.Fatalf("%d files, %v: want 42", len(files), err)
+	if err != nil || len(files) != count {
+		t.Fatalf("%d files, %v: want %d", len(files), err, count)
 	}
 	for _, f := range files {
 		text, _ := exec.Command("dciodvfy", "-new", f).CombinedOutput()
