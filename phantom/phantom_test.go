@@ -3,14 +3,14 @@ package phantom
 import (
 	"bytes"
 	"math"
+	"os"
+	"strconv"
 	"strings"
 	"testing"
 
 	"voxelproof/maps"
 	"voxelproof/maps/mapstest"
 	"voxelproof/maps/nifti"
-
-	"os"
 )
 
 func table(t *testing.T) *Table {
@@ -22,44 +22,93 @@ func table(t *testing.T) *Table {
 	return tab
 }
 
-// Published values, as far as we saw them on a page (sources beside them).
+// The numbers that the table calls seen are those of testdata/published.txt,
+// where the sources stand beside them, and no others.
 func TestPublishedValues(t *testing.T) {
 	tab := table(t)
-	for _, c := range []struct {
-		tissue string
-		field  float64
-		t1, t2 float64 // ms; 0 = not compared
-		t2s    float64
-		source string
-	}{
-		{"white matter", 1.5, 646, 0, 66, "Wright 2008"},
-		{"cortex", 1.5, 1197, 0, 84, "Wright 2008"},
-		{"white matter", 3, 838, 79.2, 53, "Wright 2008, Wansapura 1999"},
-		{"cortex", 3, 1607, 110, 66, "Wright 2008, Wansapura 1999"},
-		{"CSF", 3, 3817, 503, 0, "Lu 2005, Piechnik 2009"},
-		{"putamen", 1.5, 1084, 0, 0, "Wright 2008"},
-		{"caudate", 3, 1395, 0, 0, "Wright 2008"},
-		{"liver", 3, 809, 34, 0, "de Bazelaire 2004"},
-		{"spleen", 3, 1328, 61, 0, "de Bazelaire 2004"},
-		{"kidney medulla", 3, 1545, 81, 0, "de Bazelaire 2004"},
-		{"muscle", 3, 898, 29, 0, "de Bazelaire 2004"},
-		{"prostate", 3, 1597, 74, 0, "de Bazelaire 2004"},
-		{"myocardium", 1.5, 1070, 0, 0, "T1 1070 (1.5 T), 1220 (3 T)"},
-	} {
-		got, err := tab.Tissue(c.tissue, c.field)
-		if err != nil {
-			t.Errorf("%s: %v", c.tissue, err)
-			continue
+	published := map[numberKey]float64{}
+	data, err := os.ReadFile("testdata/published.txt")
+	if err != nil {
+		t.Fatal(err)
+	}
+	err = eachLine(bytes.NewReader(data), "published.txt", func(_ int, line string) error {
+		f := strings.Split(line, "|")
+		values := strings.Fields(f[3])
+		for i, field := range strings.Fields(f[2]) {
+			key := numberKey{tissue: strings.TrimSpace(f[0]), quantity: strings.TrimSpace(f[1])}
+			var err error
+			if key.field, err = strconv.ParseFloat(field, 64); err != nil {
+				return err
+			}
+			if published[key], err = strconv.ParseFloat(values[i], 64); err != nil {
+				return err
+			}
 		}
-		for _, v := range [][2]float64{{got.T1, c.t1}, {got.T2, c.t2}, {got.T2Star, c.t2s}} {
-			if v[1] != 0 && math.Abs(v[0]*1e3-v[1]) > 1e-6 {
-				t.Errorf("%s at %g T: %g ms: want %g (%s)", c.tissue, c.field, v[0]*1e3, v[1], c.source)
+		return nil
+	})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, n := range tab.Names() {
+		for _, v := range tab.Values(n) {
+			key := numberKey{n, v.Quantity, v.Field}
+			want, ok := published[key]
+			delete(published, key)
+			got := v.Value * quantities[v.Quantity].per
+			if ok != (v.Status == Seen) || ok && math.Abs(got-want) > 1e-9 {
+				t.Errorf("%s %s at %g T: %g, %s: published %g (%t)", n, v.Quantity, v.Field, got, v.Status, want, ok)
 			}
 		}
 	}
-	// Water content 69.1 and 83.7 % (seen).
-	if w, _ := tab.Tissue("white matter", 1.5); w.PD != 0.691 {
-		t.Errorf("PD of white matter %g: want 0.691", w.PD)
+	for key, v := range published {
+		t.Errorf("published %v = %g is not in the table", key, v)
+	}
+}
+
+// Every tissue can be imaged at 1.5 and at 3 T with spin and gradient echoes,
+// and its times are in nature's order.
+func TestEveryTissueAtClinicalFields(t *testing.T) {
+	tab := table(t)
+	for _, n := range tab.Names() {
+		for _, field := range []float64{1.5, 3} {
+			tt, err := tab.Tissue(n, field)
+			if err != nil {
+				t.Error(err)
+				continue
+			}
+			if !(tt.T2Star > 0 && tt.T2Star <= tt.T2 && tt.T2 <= tt.T1 && tt.PD > 0 && tt.PD <= 1) {
+				t.Errorf("%s at %g T: %+v", n, field, tt)
+			}
+		}
+	}
+	// Iron makes T2 and T2* of the nuclei shorter than those of cortex and
+	// shorter at 3 than at 1.5 T (common practice).
+	for _, n := range []string{"pallidum", "red nucleus", "substantia nigra", "dentate nucleus"} {
+		low, _ := tab.Tissue(n, 1.5)
+		high, _ := tab.Tissue(n, 3)
+		cortex, _ := tab.Tissue("cortex", 3)
+		if !(high.T2 < low.T2 && high.T2Star < low.T2Star && high.T2Star < 0.6*cortex.T2Star && high.Chi > 0) {
+			t.Errorf("%s: 1.5 T %+v, 3 T %+v", n, low, high)
+		}
+	}
+	// A micro-bleed differs from white matter in T2* alone.
+	bleed, _ := tab.Tissue("micro-bleed", 1.5)
+	white, _ := tab.Tissue("white matter", 1.5)
+	if bleed.T1 != white.T1 || bleed.T2 != white.T2 || bleed.T2Star > white.T2Star/5 {
+		t.Errorf("micro-bleed %+v in white matter %+v", bleed, white)
+	}
+	// An infarct of hours is its host with T1 x 1.08, T2 x 1.10, PD x 1.02 and
+	// ADC 0.40 um2/ms (from memory).
+	for infarct, host := range map[string]string{"acute infarct": "white matter", "acute infarct in cortex": "cortex"} {
+		for _, field := range []float64{1.5, 3} {
+			a, _ := tab.Tissue(infarct, field)
+			b, _ := tab.Tissue(host, field)
+			for _, c := range [][2]float64{{a.T1, 1.08 * b.T1}, {a.T2, 1.10 * b.T2}, {a.T2Star, 1.10 * b.T2Star}, {a.PD, 1.02 * b.PD}, {a.ADC, 0.4e-3}} {
+				if math.Abs(c[0]/c[1]-1) > 0.01 {
+					t.Errorf("%s at %g T: %g: want %g", infarct, field, c[0], c[1])
+				}
+			}
+		}
 	}
 }
 
@@ -106,10 +155,10 @@ func TestAbsentNumbers(t *testing.T) {
 		name  string
 		field float64
 	}{
-		`tissue "white matter" has no T2 at 7 T (there is one at 1.5 T, 3 T)`: {"white matter", 7},
-		`tissue "cortex" has no T1 at 0.55 T`:                                 {"cortex", 0.55},
-		`tissue "spleen" has no T1 at 1.5 T (there is one at 3 T)`:            {"spleen", 1.5},
-		`unknown tissue "white mater"; did you mean white matter?`:            {"white mater", 1.5},
+		`tissue "white matter" has no T2 at 7 T (there is one at 0.55 T, 1.5 T, 3 T)`: {"white matter", 7},
+		`tissue "thalamus" has no T1 at 0.55 T`:                                       {"thalamus", 0.55},
+		`tissue "spleen" has no T1 at 7 T (there is one at 1.5 T, 3 T)`:               {"spleen", 7},
+		`unknown tissue "white mater"; did you mean white matter?`:                    {"white mater", 1.5},
 	} {
 		if _, err := tab.Tissue(c.name, c.field); err == nil || !strings.Contains(err.Error(), want) {
 			t.Errorf("%v: want %q", err, want)
@@ -178,7 +227,12 @@ PD | any | 0.95 | - | seen | me
 		`status "guessed"`:                   "source m = s\n[a]\nT1 | any | 4 ms | - | guessed | m",
 		`source "z"`:                         "[a]\nT1 | any | 4 ms | - | seen | z",
 		"T2 = 500 ms is above T1 = 400 ms":   "source m = s\n[a]\nT1 | 3 T | 400 ms | - | seen | m\nT2 | 3 T | 500 ms | - | seen | m",
-		"more than 1048576 bytes":            strings.Repeat("# comment\n", 200000),
+		`x:4: T1 of a at the same field is given on line 3 already`: "source m = s\n[a]\nT1 | any | 4 ms | - | seen | m\nT1 | any | 5 ms | - | seen | m",
+		`did you mean T2train?`:                                "source m = s\n[a]\nT2trane | any | 4 ms | - | seen | m",
+		`chi value "-2000 ppm": want a number -1000..1000 ppm`: "source m = s\n[a]\nchi | any | -2000 ppm | - | seen | m",
+		`chi spread "-1 ppm": want a number 0..`:               "source m = s\n[a]\nchi | any | -2 ppm | -1 ppm | seen | m",
+		"x:2: bufio.Scanner: token too long":                   "# one\n" + strings.Repeat("x", 100000),
+		"more than 1048576 bytes":                              strings.Repeat("# comment\n", 200000),
 	} {
 		if _, err := tab.Extend(strings.NewReader(text), "x"); err == nil || !strings.Contains(err.Error(), want) {
 			t.Errorf("%v: want %q", err, want)

@@ -12,6 +12,7 @@ import (
 	"slices"
 	"strconv"
 	"strings"
+	"sync"
 
 	"voxelproof/maps"
 )
@@ -26,13 +27,14 @@ const (
 	Seen         Status = "seen"         // read on a page of its source
 	FromMemory   Status = "from memory"  // recalled, not looked up
 	Interpolated Status = "interpolated" // made from neighbouring values
+	Defined      Status = "defined"      // set by whoever describes the object
 )
 
 // Value is one number of the table.
 type Value struct {
-	Quantity string  // T1, T2, T2*, T2train, PD, fat, ADC or uptake
+	Quantity string  // T1, T2, T2*, T2train, PD, fat, ADC, uptake or chi
 	Field    float64 // T; 0 = at any field
-	Value    float64 // s, mm2/s, mM, or relative
+	Value    float64 // s, mm2/s, mM, ppm, or relative
 	Spread   float64 // one SD in the same unit; 0 = not known
 	Unit     string  // as written in the table
 	Status   Status
@@ -60,39 +62,38 @@ var quantities = map[string]struct {
 	"fat":     {"", 1, 0, 1},
 	"ADC":     {"um2/ms", 1e3, 0, 10},
 	"uptake":  {"mM", 1, 0, 100},
+	"chi":     {"ppm", 1, -1000, 1000},
 }
 
-// Load returns the built-in table.
-func Load() (*Table, error) {
+// quantityNames in the order in which they are explained.
+var quantityNames = []string{"T1", "T2", "T2*", "T2train", "PD", "fat", "ADC", "uptake", "chi"}
+
+var statuses = []string{string(Seen), string(FromMemory), string(Interpolated), string(Defined)}
+
+// builtIn is parsed once: a Table is not changed once made.
+var builtIn = sync.OnceValues(func() (*Table, error) {
 	return (&Table{}).Extend(strings.NewReader(embedded), "built-in tissue table")
-}
+})
+
+// Load returns the built-in table.
+func Load() (*Table, error) { return builtIn() }
 
 // maxTable is the largest tissue table that is read, in bytes.
 const maxTable = 1 << 20
 
 // Extend returns the table with the tissues and numbers of a text in the form
-// of the built-in table added; a number given again replaces the old one.
-// Errors name the line.
+// of the built-in table added; a number given again replaces that of t. Errors
+// name the line.
 func (t *Table) Extend(r io.Reader, file string) (*Table, error) {
 	out := &Table{names: slices.Clone(t.names), entries: map[string][]Value{}}
 	for n, vs := range t.entries {
 		out.entries[n] = slices.Clone(vs)
 	}
-	p := tableParser{table: out, sources: map[string]string{}, fresh: map[string]bool{}}
-	lr := &io.LimitedReader{R: r, N: maxTable + 1}
-	sc := bufio.NewScanner(lr)
-	for n := 1; sc.Scan(); n++ {
-		if err := p.line(strings.TrimSpace(sc.Text())); err != nil {
-			return nil, fmt.Errorf("%s:%d: %w", file, n, err)
-		}
+	p := tableParser{table: out, sources: map[string]string{}, given: map[numberKey]int{}}
+	if err := eachLine(r, file, p.line); err != nil {
+		return nil, err
 	}
-	if err := sc.Err(); err != nil {
-		return nil, fmt.Errorf("%s: %w", file, err)
-	}
-	if lr.N <= 0 {
-		return nil, fmt.Errorf("%s: more than %d bytes", file, maxTable)
-	}
-	for name := range p.fresh {
+	for _, name := range p.touched {
 		if err := out.validate(name); err != nil {
 			return nil, fmt.Errorf("%s: %w", file, err)
 		}
@@ -100,17 +101,47 @@ func (t *Table) Extend(r io.Reader, file string) (*Table, error) {
 	return out, nil
 }
 
+// eachLine calls f for every line of a text that is neither empty nor a comment,
+// with its number, spaces around it cut off. Errors of f gain file and line.
+func eachLine(r io.Reader, file string, f func(n int, s string) error) error {
+	lr := &io.LimitedReader{R: r, N: maxTable + 1}
+	sc := bufio.NewScanner(lr)
+	n := 0
+	for sc.Scan() {
+		n++
+		s := strings.TrimSpace(sc.Text())
+		if s == "" || strings.HasPrefix(s, "#") {
+			continue
+		}
+		if err := f(n, s); err != nil {
+			return fmt.Errorf("%s:%d: %w", file, n, err)
+		}
+	}
+	if lr.N <= 0 {
+		return fmt.Errorf("%s: more than %d bytes", file, maxTable)
+	}
+	if err := sc.Err(); err != nil {
+		return fmt.Errorf("%s:%d: %w", file, n+1, err)
+	}
+	return nil
+}
+
 type tableParser struct {
 	table   *Table
 	sources map[string]string
 	section string
-	fresh   map[string]bool
+	touched []string          // sections, in order
+	given   map[numberKey]int // line of each number of this text
 }
 
-func (p *tableParser) line(s string) error {
+// numberKey is what one number of a table is about.
+type numberKey struct {
+	tissue, quantity string
+	field            float64
+}
+
+func (p *tableParser) line(n int, s string) error {
 	switch {
-	case s == "" || strings.HasPrefix(s, "#"):
-		return nil
 	case strings.HasPrefix(s, "source "):
 		key, text, ok := strings.Cut(strings.TrimPrefix(s, "source "), "=")
 		if !ok || strings.TrimSpace(key) == "" || strings.TrimSpace(text) == "" {
@@ -129,14 +160,14 @@ func (p *tableParser) line(s string) error {
 			p.table.names = append(p.table.names, name)
 			p.table.entries[name] = nil
 		}
-		p.fresh[name] = true
+		p.touched = append(p.touched, name)
 		return nil
 	}
-	return p.number(s)
+	return p.number(n, s)
 }
 
 // number reads "quantity | field | value | spread | status | source".
-func (p *tableParser) number(s string) error {
+func (p *tableParser) number(n int, s string) error {
 	if p.section == "" {
 		return fmt.Errorf("%q before the first [tissue name]", s)
 	}
@@ -149,7 +180,7 @@ func (p *tableParser) number(s string) error {
 	}
 	q, ok := quantities[f[0]]
 	if !ok {
-		return fmt.Errorf("unknown quantity %q: want T1, T2, T2*, T2train, PD, fat, ADC or uptake", f[0])
+		return fmt.Errorf("unknown quantity %q: want one of %s%s", f[0], strings.Join(quantityNames, ", "), maps.DidYouMean(f[0], quantityNames))
 	}
 	v := Value{Quantity: f[0], Unit: q.unit, Status: Status(f[4])}
 	if f[1] != "any" {
@@ -160,31 +191,31 @@ func (p *tableParser) number(s string) error {
 		}
 		v.Field = field
 	}
-	read := func(what, text string) (float64, error) {
+	read := func(what, text string, least float64) (float64, error) {
 		number, ok := strings.CutSuffix(text, q.unit)
 		x, err := strconv.ParseFloat(strings.TrimSpace(number), 64)
-		if !ok || err != nil || !(x >= 0 && x <= q.max) {
-			return 0, fmt.Errorf("%s %s %q: want a number %g..%g %s", f[0], what, text, q.min, q.max, q.unit)
+		if !ok || err != nil || !(x >= least && x <= q.max) {
+			return 0, fmt.Errorf("%s %s %q: want a number %g..%g %s", f[0], what, text, least, q.max, q.unit)
 		}
 		return x / q.per, nil
 	}
 	var err error
-	if v.Value, err = read("value", f[2]); err != nil {
+	if v.Value, err = read("value", f[2], q.min); err != nil {
 		return err
 	}
-	if v.Value < q.min/q.per {
-		return fmt.Errorf("%s value %q: want a number %g..%g %s", f[0], f[2], q.min, q.max, q.unit)
-	}
 	if f[3] != "-" {
-		if v.Spread, err = read("spread", f[3]); err != nil {
+		if v.Spread, err = read("spread", f[3], 0); err != nil {
 			return err
 		}
 	}
-	switch v.Status {
-	case Seen, FromMemory, Interpolated:
-	default:
-		return fmt.Errorf("status %q: want seen, from memory or interpolated", f[4])
+	if !slices.Contains(statuses, f[4]) {
+		return fmt.Errorf("status %q: want one of %s%s", f[4], strings.Join(statuses, ", "), maps.DidYouMean(f[4], statuses))
 	}
+	key := numberKey{p.section, v.Quantity, v.Field}
+	if first, ok := p.given[key]; ok {
+		return fmt.Errorf("%s of %s at the same field is given on line %d already", v.Quantity, p.section, first)
+	}
+	p.given[key] = n
 	if v.Source, ok = p.sources[f[5]]; !ok {
 		return fmt.Errorf("source %q: want one that a line \"source %s = ...\" above explains", f[5], f[5])
 	}
@@ -272,7 +303,7 @@ func (t *Table) Tissue(name string, field float64) (maps.Tissue, error) {
 	}
 	out.Spread.T1, out.Spread.T2 = spread("T1"), spread("T2")
 	value := func(q string) float64 { v, _ := t.find(name, q, field); return v.Value }
-	out.ADC, out.Uptake, out.FatFraction = value("ADC"), value("uptake"), value("fat")
+	out.ADC, out.Uptake, out.FatFraction, out.Chi = value("ADC"), value("uptake"), value("fat"), value("chi")
 	if out.FatFraction > 0 {
 		if out.Fat, err = t.pool("fat", field); err != nil {
 			return maps.Tissue{}, fmt.Errorf("%s holds fat: %w", name, err)
