@@ -187,6 +187,7 @@ func (l *Loaded) nifti(file string, o Object, read func(io.Reader, nifti.Reading
 // files puts map files into a set. names holds the BIDS name of a file that
 // has one.
 func (l *Loaded) files(o Object, files map[maps.Quantity]string, names map[maps.Quantity]bids.Name) error {
+	var list []bids.Map
 	for _, q := range maps.Quantities() {
 		file, ok := files[q]
 		if !ok {
@@ -228,23 +229,13 @@ func (l *Loaded) files(o Object, files map[maps.Quantity]string, names map[maps.
 			}
 			o.Field = side.MagneticFieldStrength
 		}
-		factor, err := bids.Factor(q, rate, unit)
-		if err != nil {
-			return fmt.Errorf("%s: %w", file, err)
-		}
-		bids.Convert(img.Volume, rate, factor)
-		if l.Set == nil {
-			l.Set = maps.NewSet(img.Grid)
-		}
-		v := img.Volume
-		if o.Resample && l.Set.Grid.Differs(v.Grid, 1e-3) != nil {
-			v = v.Resample(l.Set.Grid)
-			l.Notes = append(l.Notes, fmt.Sprintf("%s: resampled to the grid of the first map (trilinear)", file))
-		}
-		if err := l.Set.Add(q, v); err != nil {
-			return fmt.Errorf("%s: %w (--resample does it)", file, err)
-		}
+		list = append(list, bids.Map{From: file, Quantity: q, Rate: rate, Unit: unit, Volume: img.Volume})
 	}
+	set, notes, err := bids.Assemble(list, o.Resample)
+	if err != nil {
+		return fmt.Errorf("%w%s", err, offer(err, o.Resample))
+	}
+	l.Set, l.Notes = set, append(l.Notes, notes...)
 	l.Set.Field = o.Field
 	l.Set.Origin = maps.Origin{Source: "map files", Person: true}
 	if ff := l.Set.Volume(maps.FatFraction); ff != nil {
@@ -262,6 +253,14 @@ func (l *Loaded) files(o Object, files map[maps.Quantity]string, names map[maps.
 		l.Notes = append(l.Notes, f.String())
 	}
 	return err
+}
+
+// offer names the option that mends maps on different grids.
+func offer(err error, resample bool) string {
+	if resample || !strings.Contains(err.Error(), "resample") {
+		return ""
+	}
+	return " (--resample does it)"
 }
 
 // sameUnit reports whether two spellings mean one unit.
