@@ -190,6 +190,7 @@ for folder in sorted(glob.glob(root + "/dicom/*")):
         m = d.RealWorldValueMappingSequence[0]
         assert abs(m.RealWorldValueSlope * k - 1) < 1e-12
         assert float(d.RepetitionTime) == 2345.6 and float(d.EchoTime) == 12.3 and float(d.InversionTime) == 150.0 and float(d.FlipAngle) == 77.0, d
+        assert side["SeriesNumber"] == int(d.SeriesNumber), (side["SeriesNumber"], d.SeriesNumber)
         assert float(d.MagneticFieldStrength) == 1.5 and list(d.ScanningSequence) == ["SE", "IR"]
         assert d[0x0008, 0x001c].value == "YES" and d.QualityControlSubject == "YES" and d.QualityControlImage == "YES"
         assert "SYNTHETIC" in str(d.PatientName) and d.IssuerOfPatientID and d.ImageType[0] == "DERIVED"

@@ -189,7 +189,7 @@ func (w *writer) all(ctx context.Context) error {
 func (w *writer) names() []string {
 	out := make([]string, len(w.Series))
 	for i, s := range w.Series {
-		out[i] = fmt.Sprintf("%04d-%s", dcmobj.SeriesNumber(s.Header), slug(s.Scan.Name))
+		out[i] = fmt.Sprintf("%04d-%s", s.SeriesNumber(), slug(s.Scan.Name))
 	}
 	return out
 }
@@ -312,7 +312,7 @@ func (w *writer) manifest() *Manifest {
 	}
 	for i, s := range w.Series {
 		ms := ManifestSeries{
-			Number: dcmobj.SeriesNumber(s.Header), Scan: s.Scan.Name, Kind: s.Kind.String(), Plane: s.Plane.String(),
+			Number: s.SeriesNumber(), Scan: s.Scan.Name, Kind: s.Kind.String(), Plane: s.Plane.String(),
 			Slices: s.Grid.Size[2], Size: [2]int{s.Grid.Size[0], s.Grid.Size[1]},
 			Seed: s.Scan.Seed, Sigma: s.Scan.Sigma, Window: w.windows.Own[i], Notes: s.Scan.Notes,
 		}

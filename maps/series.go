@@ -25,6 +25,9 @@ type Header struct {
 	Origin  Origin
 }
 
+// SeriesNumber is 100 x scan + kind, kinds counted from 1.
+func (h Header) SeriesNumber() int { return 100*h.Number + int(h.Kind) + 1 }
+
 // Source makes the slices of a series. It may be used from several goroutines
 // at once; the values of a slice depend on k alone.
 type Source interface {

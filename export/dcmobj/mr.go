@@ -39,12 +39,9 @@ func (id Identity) Study() string { return id.uid("study") }
 // Frame returns the frame-of-reference UID that all series of the study share.
 func (id Identity) Frame() string { return id.uid("frame of reference") }
 
-// SeriesNumber is 100 x scan + kind.
-func SeriesNumber(h maps.Header) int { return 100*h.Number + int(h.Kind) + 1 }
-
 // Series returns the UID of a series.
 func (id Identity) Series(h maps.Header) string {
-	return id.uid("series", SeriesNumber(h), int(h.Plane))
+	return id.uid("series", h.SeriesNumber(), int(h.Plane))
 }
 
 // Window is a display window with its explanation.
@@ -82,7 +79,7 @@ func WriteMR(w io.Writer, im Image, pixels []int) error {
 		return fmt.Errorf("dicom: %d columns and %d rows: want at most 65535", g.Size[0], g.Size[1])
 	}
 	b := &builder{}
-	sop := im.uid("image", SeriesNumber(im.Header), int(im.Plane), im.Slice)
+	sop := im.uid("image", im.SeriesNumber(), int(im.Plane), im.Slice)
 	b.add(tag.FileMetaInformationVersion, []byte{0, 1})
 	b.text(tag.MediaStorageSOPClassUID, mrImageStorage)
 	b.text(tag.MediaStorageSOPInstanceUID, sop)
@@ -153,7 +150,7 @@ func (im Image) series(b *builder) {
 	start := im.Date.Add(im.Start)
 	b.text(tag.Modality, "MR")
 	b.text(tag.SeriesInstanceUID, im.Series(im.Header))
-	b.integer(tag.SeriesNumber, SeriesNumber(im.Header))
+	b.integer(tag.SeriesNumber, im.SeriesNumber())
 	for _, t := range []tag.Tag{tag.SeriesDate, tag.AcquisitionDate, tag.ContentDate} {
 		b.text(t, start.Format("20060102"))
 	}

@@ -182,7 +182,7 @@ func ImageSidecar(h maps.Header, version string) []byte {
 	m := map[string]any{
 		"Modality": "MR", "Manufacturer": "voxelproof (computed, not scanned)", "SoftwareVersions": version,
 		"Synthetic": true, "NotForDiagnosis": true,
-		"ProtocolName": a.Name, "SeriesNumber": 100*h.Number + int(h.Kind), "PulseSequenceType": a.Sequence,
+		"ProtocolName": a.Name, "SeriesNumber": h.SeriesNumber(), "PulseSequenceType": a.Sequence,
 		"ImageKind": h.Kind.String(), "Description": h.Origin.Source,
 	}
 	for k, v := range map[string]float64{
