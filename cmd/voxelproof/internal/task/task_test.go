@@ -128,7 +128,7 @@ scans:
 // each engine version: when they change, bump render.EngineVersion and add its
 // line.
 var golden = map[string]string{
-	"1": "237d237918655ce52c67b758277d04685905c854a20f9756b96030db006db0d2",
+	"1": "9e9c58605274e0ec73061983e19c3dfaafdb59d717a0db66c9d6a72bee8c130e",
 }
 
 func TestGoldenFiles(t *testing.T) {
@@ -137,8 +137,11 @@ func TestGoldenFiles(t *testing.T) {
 	}
 	t.Setenv("SOURCE_DATE_EPOCH", "")
 	var hashes []string
-	for _, f := range small(t, Object{Phantom: "head", Voxel: 7, Findings: []string{"infarct"}}, "18-20").Files {
-		hashes = append(hashes, f.Path+" "+f.SHA256)
+	head := Object{Phantom: "head", Voxel: 7, Findings: []string{"infarct"}}
+	for _, m := range []*export.Manifest{small(t, head, "18-20", voxel), small(t, head, "9-10", acquired)} {
+		for _, f := range m.Files {
+			hashes = append(hashes, f.Path+" "+f.SHA256)
+		}
 	}
 	got := hex.EncodeToString(sum([]byte(strings.Join(hashes, "\n"))))
 	if got != golden[render.EngineVersion] {
@@ -147,10 +150,10 @@ func TestGoldenFiles(t *testing.T) {
 }
 
 // small makes a study of an object with the scans of the demo.
-func small(t *testing.T, o Object, slices string) *export.Manifest {
+func small(t *testing.T, o Object, slices, level string) *export.Manifest {
 	t.Helper()
 	s := Demo(filepath.Join(t.TempDir(), "out"))
-	s.Object, s.Slices, s.Level, s.Formats = o, slices, voxel, []export.Format{export.PNG, export.PNG16, export.DICOM}
+	s.Object, s.Slices, s.Level, s.Formats = o, slices, level, []export.Format{export.PNG, export.PNG16, export.DICOM}
 	if _, err := s.Run(t.Context(), nil); err != nil {
 		t.Fatal(err)
 	}
@@ -190,7 +193,7 @@ func TestFilesDoNotDependOnCores(t *testing.T) {
 	o := segmented(t)
 	for _, cores := range []int{1, 2, 7} {
 		runtime.GOMAXPROCS(cores)
-		got := small(t, o, "3-5").Files
+		got := small(t, o, "3-5", voxel).Files
 		for i := range want {
 			if got[i] != want[i] {
 				t.Fatalf("%d cores: %s differs", cores, got[i].Path)
