@@ -1,8 +1,10 @@
 package synth
 
 import (
+	"encoding/json"
 	"math"
 	"math/cmplx"
+	"os"
 	"strings"
 	"testing"
 
@@ -137,6 +139,47 @@ func TestDixon(t *testing.T) {
 	s.TE = 0.006
 	if _, err := NewModel(1.5, s); err == nil || !strings.Contains(err.Error(), "4.61 ms") {
 		t.Errorf("TE between: %v: want an offer of 4.61 ms", err)
+	}
+}
+
+// Water and fat images agree with the Bloch tables of two-point separation with
+// six peaks (family 11 of the reference tables). The echo times there have eight
+// digits, hence the tolerance.
+func TestDixonReference(t *testing.T) {
+	data, err := os.ReadFile("testdata/reference/11_fat_water.json")
+	if err != nil {
+		t.Fatal(err)
+	}
+	var f struct {
+		Rows []struct {
+			ID     string
+			Tissue struct{ B0, T1, T2, T2s float64 }
+			Params struct{ FF, TR, Alpha float64 }
+			Info   struct {
+				In   float64                       `json:"TE_in"`
+				Pool struct{ T1, T2, T2s float64 } `json:"fat_pool"`
+			}
+			Values map[string]struct{ Bloch float64 }
+		}
+	}
+	if err := json.Unmarshal(data, &f); err != nil || len(f.Rows) < 8 {
+		t.Fatalf("%d rows, %v", len(f.Rows), err)
+	}
+	for _, r := range f.Rows {
+		m, err := NewModel(r.Tissue.B0, Scan{Sequence: SpoiledGRE, Images: []maps.Kind{maps.WaterImage, maps.FatImage},
+			Timing: maps.Timing{TR: r.Params.TR / 1e3, TE: r.Info.In / 1e3, Flip: r.Params.Alpha * deg}})
+		if err != nil {
+			t.Fatal(err)
+		}
+		v := maps.Tissue{PD: 1, FatFraction: r.Params.FF,
+			Pool: maps.Pool{T1: r.Tissue.T1 / 1e3, T2: r.Tissue.T2 / 1e3, T2Star: r.Tissue.T2s / 1e3},
+			Fat:  maps.Pool{T1: r.Info.Pool.T1 / 1e3, T2: r.Info.Pool.T2 / 1e3, T2Star: r.Info.Pool.T2s / 1e3}}
+		ch := m.one(v, Condition{})
+		for name, k := range map[string]maps.Kind{"dixon_water_6peak": maps.WaterImage, "dixon_fat_6peak": maps.FatImage} {
+			if got, want := m.Combine(k, ch), r.Values[name].Bloch; !(math.Abs(got-want) <= 1e-6) {
+				t.Errorf("%s: %s = %.9f: want %.9f", r.ID, name, got, want)
+			}
+		}
 	}
 }
 

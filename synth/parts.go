@@ -60,8 +60,9 @@ func (m *Model) suppressed(b0 float64) (water, fat float64) {
 	return left(b0 - mainFat*hz), left(b0)
 }
 
-// relaxivities of contrast agents in plasma at 37 C by field, 1/(mM s): r1 as
-// seen at 1.5, 3 and 7 T; r2 from memory at 1.5 and 3 T.
+// relaxivities r1 and r2 of contrast agents in plasma by field (T), in 1/(mM s):
+// r1 are published values, r2 from memory. At 7 T no r2 is known, so there is
+// no entry.
 var relaxivities = map[string]map[float64][2]float64{
 	"gadobutrol":  {1.5: {4.78, 6.1}, 3: {4.97, 7.1}},
 	"gadoteridol": {1.5: {3.80, 5.0}, 3: {3.28, 5.7}},
