@@ -2,36 +2,30 @@ package epg
 
 import (
 	"math"
-	"math/cmplx"
 	"math/rand/v2"
 	"testing"
 
 	"voxelproof/maps"
+	"voxelproof/synth/bloch"
 )
 
-// isochromats follows single magnetisation vectors by the Bloch equations, an
+// isochromats follows single magnetisation vectors by exact propagators, an
 // independent way to the same numbers: n of them, evenly spread over a full
 // turn of dephasing per half spacing, refocused about x. It returns the mean
 // transverse magnetisation at the echoes and the mean longitudinal one at the
 // last. n above twice the number of half spacings makes the mean exact.
-func isochromats(spacing float64, angles []float64, p maps.Pool, xy complex128, z float64) ([]complex128, float64) {
+func isochromats(spacing float64, angles []float64, p maps.Pool, start bloch.Vector) ([]complex128, float64) {
 	n := 4*len(angles) + 4
-	e1, e2 := math.Exp(-spacing/2/p.T1), math.Exp(-spacing/2/p.T2)
 	echoes := make([]complex128, len(angles))
 	last := 0.0
 	for j := range n {
-		turn := cmplx.Rect(e2, 2*math.Pi*float64(j)/float64(n))
-		m, mz := xy, z
-		free := func() { m, mz = m*turn, 1+(mz-1)*e1 }
+		m := start
+		half := bloch.Rest{Time: spacing / 2, Turns: float64(j) / float64(n)}.Step(p)
 		for i, a := range angles {
-			free()
-			sin, cos := math.Sincos(a)
-			y := imag(m)
-			m, mz = complex(real(m), cos*y-sin*mz), sin*y+cos*mz
-			free()
-			echoes[i] += m / complex(float64(n), 0)
+			m = bloch.Chain(half, bloch.RF{Angle: a}.Step(), half).From(m)
+			echoes[i] += m.Transverse() / complex(float64(n), 0)
 		}
-		last += mz / float64(n)
+		last += m[2] / float64(n)
 	}
 	return echoes, last
 }
@@ -52,11 +46,11 @@ func TestTrainAgainstBloch(t *testing.T) {
 		train := NewTrain(spacing, angles)
 		got := make([]float64, len(angles))
 		for _, across := range []bool{false, true} {
-			start := complex(1, 0)
+			start := bloch.Vector{1, 0, 0}
 			if across {
-				start = 1i
+				start = bloch.Vector{0, 1, 0}
 			}
-			want, _ := isochromats(spacing, angles, p, start, 0)
+			want, _ := isochromats(spacing, angles, p, start)
 			train.Echoes(got, p, across, &w)
 			for i := range got {
 				x := real(want[i])
@@ -68,7 +62,7 @@ func TestTrainAgainstBloch(t *testing.T) {
 		}
 		keep, gain := train.Longitudinal(p, &w)
 		z := r.Float64()
-		_, want := isochromats(spacing, angles, p, 0, z)
+		_, want := isochromats(spacing, angles, p, bloch.Vector{0, 0, z})
 		worst = math.Max(worst, math.Abs(keep*z+gain-want))
 	}
 	if worst > 1e-10 {

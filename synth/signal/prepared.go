@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"voxelproof/maps"
+	"voxelproof/synth/bloch"
 )
 
 // ReadTrain is a train of gradient-echo readouts after an inversion.
@@ -71,7 +72,7 @@ type T2Preparation struct {
 // T2PreparedGRE returns the signal per unit PD of 90 - D/2 - 180 - D/2 - (-90) -
 // spoil - delay - excitation (t.Flip) - TE - spoil - rest, tip-down to tip-down
 // t.TR. The module is uncrushed, so that with B1 other than 1 it is a product of
-// three rotations about two axes and relaxation.
+// three rotations about two axes and relaxation (package bloch).
 //
 //	B1 = 1: Mz -> Mz exp(-D/T2) within the module
 //
@@ -90,21 +91,12 @@ func T2PreparedGRE(p maps.Pool, t maps.Timing, prep T2Preparation) float64 {
 	return ready.from(chain(ready, after).steady()) * math.Sin(flip) * math.Exp(-t.TE/p.T2Star)
 }
 
-// path is what the module makes of Mz: it is linear in it, so two starts tell.
+// path is what the module makes of Mz.
 func (prep T2Preparation) path(p maps.Pool, b1 float64) path {
-	half := prep.Duration / 2
-	r, e2 := rest(half, p.T1), math.Exp(-half/p.T2)
-	run := func(mz float64) float64 {
-		// Tip-down and tip-up turn about x, the refocusing pulse about y.
-		sin, cos := math.Sincos(b1 * math.Pi / 2)
-		x, y, z := 0.0, -sin*mz, cos*mz
-		x, y, z = x*e2, y*e2, r.from(z)
-		sin, cos = math.Sincos(b1 * math.Pi)
-		x, z = cos*x+sin*z, cos*z-sin*x
-		_, y, z = x*e2, y*e2, r.from(z)
-		sin, cos = math.Sincos(-b1 * math.Pi / 2)
-		return cos*z + sin*y
-	}
-	gain := run(0)
-	return path{run(1) - gain, gain}
+	half := bloch.Rest{Time: prep.Duration / 2}.Step(p)
+	down := bloch.RF{Angle: b1 * math.Pi / 2}
+	turn := bloch.RF{Angle: b1 * math.Pi, Phase: math.Pi / 2}
+	up := bloch.RF{Angle: -b1 * math.Pi / 2}
+	module := bloch.Chain(down.Step(), half, turn.Step(), half, up.Step())
+	return path{module.A[2][2], module.B[2]}
 }

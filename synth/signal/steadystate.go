@@ -31,6 +31,17 @@ func BalancedSSFP(p maps.Pool, t maps.Timing, df float64) complex128 {
 	return plus * cmplx.Rect(math.Sqrt(e2), (th-math.Pi)/2)
 }
 
+// BestAngleSSFP returns the flip angle in rad of the largest signal of a
+// balanced SSFP on resonance.
+//
+//	cos(angle) = (E1 - E2) / (1 - E1 E2)
+//
+// Source: derived here, by setting the derivative of BalancedSSFP to 0.
+func BestAngleSSFP(p maps.Pool, t maps.Timing) float64 {
+	e1, e2 := math.Exp(-t.TR/p.T1), math.Exp(-t.TR/p.T2)
+	return math.Acos((e1 - e2) / (1 - e1*e2))
+}
+
 // SSFPFID returns the signal per unit PD of unbalanced steady-state free
 // precession (SSFP-FID) at t.TE, when the voxel dephases by a full turn per TR
 // after the readout.
