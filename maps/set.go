@@ -53,6 +53,16 @@ func (s *Set) Add(q Quantity, v *Volume) error {
 	return nil
 }
 
+// With returns a set that shares everything with s but the map of q, which it
+// gets instead of the one it may have. It refuses what Add refuses.
+func (s *Set) With(q Quantity, v *Volume) (*Set, error) {
+	out := *s
+	if q >= 0 && q < numQuantities {
+		out.vol[q] = nil
+	}
+	return &out, out.Add(q, v)
+}
+
 // Tolerance is how far in mm the corners of two grids may be apart and the
 // grids still be one: a thousandth of a voxel.
 func (s *Set) Tolerance() float64 { return 1e-3 * slices.Min(s.Grid.Spacing[:]) }

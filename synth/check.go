@@ -20,7 +20,7 @@ var uses = map[Sequence]struct{ need, may []string }{
 	SaturationRecovery: {need: []string{"TR", "TE", "TS"}, may: []string{"readout", "flip", "refocusing", "saturation"}},
 	InversionRecovery:  {need: []string{"TR", "TE", "TI"}, may: []string{"readout", "flip", "refocusing", "efficiency", "train", "ESP", "angles", "centre", "single shot", "view order"}},
 	DoubleInversion:    {need: []string{"TR", "TE", "TI", "TI1"}, may: []string{"readout", "flip", "refocusing", "efficiency"}},
-	SpoiledGRE:         {need: []string{"TR", "TE", "flip"}, may: []string{"pulse", "T2 preparation", "T2 preparation delay"}},
+	SpoiledGRE:         {need: []string{"TR", "TE", "flip"}, may: []string{"pulse", "T2 preparation", "T2 preparation delay", "RF spoiling", "half echo"}},
 	BalancedSSFP:       {need: []string{"TR", "flip"}, may: []string{"TE"}},
 	SSFPFID:            {need: []string{"TR", "TE", "flip"}},
 	SSFPEcho:           {need: []string{"TR", "TE", "flip"}},
@@ -297,6 +297,9 @@ func (s Scan) checkRest() error {
 	}
 	if s.Prep.T2Prep == 0 && s.Prep.T2PrepDelay > 0 {
 		return fmt.Errorf("T2 preparation delay without T2 preparation")
+	}
+	if s.Spoiling > 0 && (s.Pulse > 0 || s.Prep.T2Prep > 0) {
+		return fmt.Errorf("RF spoiling is computed in the steady state without T2 preparation: want no pulse and no T2 preparation")
 	}
 	if s.Prep.BValue > 1e5 {
 		return fmt.Errorf("b = %g s/mm2: want at most 100000 s/mm2", s.Prep.BValue)

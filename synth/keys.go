@@ -247,6 +247,8 @@ var keys = []key{
 	count("centre", "number of the echo or readout at the centre of k-space", func(s *Scan) *int { return &s.Train.Echo }),
 	flag("single shot", "the whole picture from one train", func(s *Scan) *bool { return &s.Train.SingleShot }),
 	word("view order", "order of the phase-encode lines", []string{"linear", "centre-out"}, func(s *Scan) *string { return &s.Train.Order }),
+	quantity("RF spoiling", &Angle, "phase increment of the pulses, such as 117 deg; without it spoiling is ideal", func(s *Scan) *float64 { return &s.Spoiling }),
+	flag("half echo", "recorded from the centre of k-space outward, for ultra-short TE", func(s *Scan) *bool { return &s.Sampling.HalfEcho }),
 	count("pulse", "excitation whose echo is recorded before the steady state", func(s *Scan) *int { return &s.Pulse }),
 
 	quantity("T2 preparation", &Time, "tip-down to tip-up", func(s *Scan) *float64 { return &s.Prep.T2Prep }),
@@ -277,7 +279,7 @@ var keys = []key{
 	several("offset", &Length, "of the slab centre from the object's, along R, A and S", func(s *Scan) []float64 { return s.Geometry.Offset[:] }),
 	word("phase axis", "direction of phase encoding", []string{"RL", "AP", "SI"}, func(s *Scan) *string { return &s.Geometry.PhaseAxis }),
 	flag("reverse readout", "read polarity toward the other side", func(s *Scan) *bool { return &s.Geometry.Reverse }),
-	word("slice profile", "shape of the slice", []string{"rectangular", "gaussian", "sinc"}, func(s *Scan) *string { return &s.Geometry.Profile }),
+	word("slice profile", "shape of the slice; flip angles follow it in 2D", []string{"rectangular", "gaussian", "sinc"}, func(s *Scan) *string { return &s.Geometry.Profile }),
 	flag("3D", "volume acquisition", func(s *Scan) *bool { return &s.Geometry.Volume3D }),
 
 	quantity("averages", &Ratio, "number of signal averages", func(s *Scan) *float64 { return &s.Sampling.Averages }),

@@ -7,17 +7,10 @@ import (
 	"sync"
 
 	"voxelproof/maps"
+	"voxelproof/synth/bloch"
 	"voxelproof/synth/epg"
 	"voxelproof/synth/signal"
 )
-
-// Condition is what a voxel's surroundings do to a scan; the zero value is
-// ideal.
-type Condition struct {
-	B0       float64 // Hz off resonance of water
-	B1       float64 // flip angle obtained / nominal; 0 = 1
-	Gradient float64 // Hz of B0 across the slice thickness
-}
 
 // Model is one scan made ready to be evaluated for many tissues. It is safe
 // for concurrent use.
@@ -27,6 +20,13 @@ type Model struct {
 	// pool is the signal per unit PD of one pool in one channel at the centre of
 	// k-space, phase left out.
 	pool func(p maps.Pool, t maps.Timing, channel int) float64
+	// slow, of sequences that take long to evaluate, is what pool is made of but
+	// for the decay of a free induction: it depends on T1, T2 and the flip angles
+	// only, so that a table can stand for it.
+	slow func(p maps.Pool, t maps.Timing) float64
+	// inflow, where it is set, replaces pool for water of which a share is
+	// renewed in every TR.
+	inflow func(p maps.Pool, t maps.Timing, renewed float64) float64
 	// train, of sequences with refocusing trains, sets dst to the echoes.
 	train func(dst []float64, p maps.Pool, t maps.Timing)
 	// offset, of sequences whose signal depends on the frequency itself, is the
@@ -60,6 +60,12 @@ func NewModel(field float64, s Scan) (*Model, error) {
 	if err := build(m); err != nil {
 		return nil, fmt.Errorf("scan %q: %w", s.Name, err)
 	}
+	if m.scan.Prep.T2Prep == 0 { // its own pulses are not selective
+		m.across(m.scan.flips())
+	}
+	if slow := m.slow; slow != nil {
+		m.pool = func(p maps.Pool, t maps.Timing, ch int) float64 { return m.decayed(slow(m.seen(p), t), p, ch) }
+	}
 	return m, nil
 }
 
@@ -77,9 +83,12 @@ var builders = map[Sequence]func(*Model) error{
 		m.pool = func(p maps.Pool, t maps.Timing, _ int) float64 { return signal.SpinEcho(p, t) }
 		return nil
 	},
-	GradientEchoEPI: freeInduction(signal.SpoiledGRE),
-	SSFPFID:         freeInduction(signal.SSFPFID),
-	SSFPEcho:        freeInduction(signal.SSFPEcho),
+	GradientEchoEPI: func(m *Model) error {
+		m.inflow = signal.InflowGRE
+		return freeInduction(signal.SpoiledGRE)(m)
+	},
+	SSFPFID:  freeInduction(signal.SSFPFID),
+	SSFPEcho: freeInduction(signal.SSFPEcho),
 	BalancedSSFP: func(m *Model) error {
 		m.offset = signal.BalancedSSFP
 		return nil
@@ -106,6 +115,19 @@ func spoiledGRE(m *Model) error {
 		if err := m.inPhase(); err != nil {
 			return err
 		}
+	}
+	if s.Spoiling > 0 {
+		if _, err := bloch.Period(s.Spoiling); err != nil {
+			return err
+		}
+		m.slow = func(p maps.Pool, t maps.Timing) float64 {
+			t.TE = 0
+			return signal.RFSpoiledGRE(p, t, s.Spoiling)
+		}
+		return nil
+	}
+	if s.Prep.T2Prep == 0 && s.Pulse == 0 {
+		m.inflow = signal.InflowGRE
 	}
 	m.pool = func(p maps.Pool, t maps.Timing, channel int) float64 {
 		t.TE = m.te(channel)
@@ -214,15 +236,14 @@ func fastSpinEcho(f func([]float64, maps.Pool, maps.Timing, *epg.Train, *epg.Wor
 			if t.Refocus != s.Refocus { // B1
 				train = epg.NewTrain(s.Train.Spacing, s.refocusing(t.Refocus/s.Refocus))
 			}
-			p.T2 = signal.TrainT2(p, s.Train.Spacing)
 			f(dst, p, t, train, w)
 		}
 		m.train = func(dst []float64, p maps.Pool, t maps.Timing) {
 			b := scratch.Get().(*trainScratch)
 			defer scratch.Put(b)
-			run(dst, p, t, &b.work)
+			run(dst, m.seen(p), t, &b.work)
 		}
-		m.pool = func(p maps.Pool, t maps.Timing, _ int) float64 {
+		m.slow = func(p maps.Pool, t maps.Timing) float64 {
 			b := scratch.Get().(*trainScratch)
 			defer scratch.Put(b)
 			run(b.echoes, p, t, &b.work)
@@ -230,6 +251,22 @@ func fastSpinEcho(f func([]float64, maps.Pool, maps.Timing, *epg.Train, *epg.Wor
 		}
 		return nil
 	}
+}
+
+// seen returns the pool as an echo train sees it.
+func (m *Model) seen(p maps.Pool) maps.Pool {
+	if m.train != nil {
+		p.T2, p.T2Train = signal.TrainT2(p, m.scan.Train.Spacing), 0
+	}
+	return p
+}
+
+// decayed applies the decay of a free induction to what slow gives.
+func (m *Model) decayed(v float64, p maps.Pool, channel int) float64 {
+	if m.dephases {
+		v *= math.Exp(-m.te(channel) / p.T2Star)
+	}
+	return v
 }
 
 // trainScratch is the memory of one evaluation of a train.
@@ -281,7 +318,7 @@ func (m *Model) Needs(t maps.Tissue) error {
 			return fmt.Errorf("scan %q: %s%s: T1 = %g s: want more than 0", m.scan.Name, p.what, name, p.T1)
 		case m.dephases && !(p.T2Star > 0):
 			return fmt.Errorf("scan %q: %s%s has no T2*: %s needs it", m.scan.Name, p.what, name, m.scan.Sequence)
-		case (!m.dephases || m.scan.Sequence == SSFPFID || m.scan.Sequence == SSFPEcho) && !(p.T2 > 0):
+		case (!m.dephases || m.needsT2()) && !(p.T2 > 0):
 			return fmt.Errorf("scan %q: %s%s has no T2: %s needs it", m.scan.Name, p.what, name, m.scan.Sequence)
 		}
 	}
@@ -289,6 +326,12 @@ func (m *Model) Needs(t maps.Tissue) error {
 		return fmt.Errorf("scan %q: %s has no ADC: diffusion weighting needs it", m.scan.Name, name)
 	}
 	return nil
+}
+
+// needsT2 reports that a free induction depends on T2 too.
+func (m *Model) needsT2() bool {
+	s := m.scan
+	return s.Sequence == SSFPFID || s.Sequence == SSFPEcho || s.Spoiling > 0 || s.Prep.T2Prep > 0
 }
 
 // Signal sets dst (len Channels) to the complex signal of a voxel of the
@@ -305,12 +348,34 @@ func (m *Model) Signal(dst []complex128, t maps.Tissue, c Condition) {
 		water, fat := m.turns(m.te(ch), c)
 		dst[ch] = 0
 		if w.pd != 0 {
-			dst[ch] += complex(w.pd*m.pool(w.pool, tm, ch), 0) * water
+			dst[ch] += complex(w.pd*m.water(w.pool, tm, c, ch), 0) * water
 		}
 		if f.pd != 0 {
 			dst[ch] += complex(f.pd*m.pool(f.pool, tm, ch), 0) * fat
 		}
 	}
+}
+
+// water is pool for water that may flow.
+func (m *Model) water(p maps.Pool, t maps.Timing, c Condition, channel int) float64 {
+	if m.inflow == nil || c.Flow == 0 || m.scan.Geometry.Volume3D {
+		return m.pool(p, t, channel)
+	}
+	t.TE = m.te(channel)
+	return m.inflow(p, t, c.Flow*t.TR)
+}
+
+// stays is the share of flowing water that both pulses of a spin echo meet
+// within the slice; the rest gives no echo.
+//
+//	max(0, 1 - v TE / (2 thickness))
+//
+// Source: Bradley, Waluch, Radiology 154 (1985) 443 (from memory).
+func (m *Model) stays(c Condition) float64 {
+	if m.dephases || m.offset != nil || m.scan.Geometry.Volume3D {
+		return 1
+	}
+	return math.Max(0, 1-c.Flow*m.scan.TE/2)
 }
 
 // offsets adds water and the peaks of fat at their own frequencies.

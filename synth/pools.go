@@ -59,8 +59,10 @@ func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
 			for i := range values {
 				values[i] = signal.PreparedGRE(p, tm, train, i+1)
 			}
-		default:
+		case fat:
 			values[0] = m.pool(p, tm, channel)
+		default:
+			values[0] = m.water(p, tm, c, channel)
 		}
 		echoes := make([]complex128, len(values))
 		for i, v := range values {

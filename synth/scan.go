@@ -59,6 +59,9 @@ type Scan struct {
 	Plane    maps.Plane
 	Seed     uint64
 
+	// Spoiling is the phase increment of RF spoiling in rad; 0 = ideal spoiling.
+	Spoiling float64
+
 	// Pulse is the number of the excitation whose echo is recorded before the
 	// steady state; 0 = steady state.
 	Pulse int
@@ -122,6 +125,7 @@ type Sampling struct {
 	GFactor        float64 // noise amplification of parallel imaging; 0 = 1
 	Coils          int     // receive channels; 0 = 1
 	Filter         string  // "", "hamming", "tukey"
+	HalfEcho       bool    // recorded from the centre of k-space outward, for ultra-short TE
 }
 
 // Noise states the noise level of voxel-level images: either the SNR of a

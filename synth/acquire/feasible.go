@@ -19,12 +19,13 @@ type Hardware struct {
 	Spoil    float64 // spoiler at the end of a preparation or of an echo train
 	FatPulse float64 // spectral pulse with its spoiler
 	Gradient float64 // mT/m, for diffusion weighting
+	Switch   float64 // from transmission to reception
 }
 
 // Typical is a whole-body scanner (common practice, no particular one).
 func Typical() Hardware {
 	return Hardware{Excite: 1.5e-3, Refocus: 2e-3, Invert: 8e-3, Short: 1e-3, Lobe: 0.6e-3, Blip: 0.2e-3,
-		Spoil: 3e-3, FatPulse: 15e-3, Gradient: 40}
+		Spoil: 3e-3, FatPulse: 15e-3, Gradient: 40, Switch: 30e-6}
 }
 
 // String states the assumed times in one line.
@@ -90,6 +91,10 @@ func echoTime(s synth.Scan, x *Prescription, h Hardware) error {
 	}
 	if !spinEchoes(s) {
 		least := h.Short/2 + h.Lobe + half
+		if s.Sampling.HalfEcho {
+			// Half pulses end at their centre and nothing is prephased.
+			least, why = h.Switch, "switching from transmission to reception"
+		}
 		if s.TE < least-slack {
 			return tooShort("TE", s.TE, least, why)
 		}

@@ -38,7 +38,10 @@ func NewObject(set *maps.Set) (*Object, error) {
 		return nil, err
 	}
 	o := &Object{set: set, cache: map[cacheKey]*encoded{}}
-	o.fields = set.Mixture == nil || set.Volume(maps.B0) != nil || set.Volume(maps.B1) != nil
+	o.fields = set.Mixture == nil
+	for _, q := range []maps.Quantity{maps.B0, maps.B1, maps.Velocity, maps.Coil} {
+		o.fields = o.fields || set.Volume(q) != nil
+	}
 	g := set.Grid
 	o.box = empty(g)
 	if m := set.Mixture; m != nil {

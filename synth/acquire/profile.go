@@ -4,7 +4,6 @@ import (
 	"math"
 
 	"voxelproof/synth"
-	"voxelproof/synth/kspace"
 )
 
 // sample is one thin sheet of a slice: its distance from the slice centre in mm
@@ -29,27 +28,15 @@ func (p *Prescription) sheets(s synth.Scan, step float64, k int) []sample {
 		}
 		return out
 	}
-	shape, reach := func(float64) float64 { return 1 }, t/2
-	switch s.Geometry.Profile {
-	case "gaussian": // full width at half maximum = thickness
-		reach = 1.5 * t
-		shape = func(z float64) float64 { return math.Exp(-4 * math.Ln2 * z * z / (t * t)) }
-	case "sinc":
-		// A Hamming-windowed sinc pulse of time-bandwidth product 4 at small flip
-		// angles: a slice as blurred as an edge whose pixel is a quarter of it.
-		reach = 1.5 * t
-		w := kspace.WindowAt("hamming")
-		shape = func(z float64) float64 {
-			return kspace.Edge(w, (z+t/2)/(t/4)) - kspace.Edge(w, (z-t/2)/(t/4))
-		}
-	}
+	shape, reach := s.Geometry.Shape()
+	reach *= t
 	count := max(1, int(math.Ceil(2*reach/step-1e-9)))
 	h := 2 * reach / float64(count)
 	out := make([]sample, count)
 	var sum float64
 	for i := range out {
 		z := (float64(i)+0.5)*h - reach
-		out[i] = sample{z, shape(z)}
+		out[i] = sample{z, shape(z / t)}
 		sum += out[i].weight
 	}
 	for i := range out {

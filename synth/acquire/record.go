@@ -54,10 +54,7 @@ func (r *scanner) notes(opt Options) []string {
 // Leaves lists what the acquired level of a scan assumes and leaves out, one
 // line each.
 func Leaves(s synth.Scan, x *Prescription) []string {
-	n := []string{"ideal spoiling before each excitation; instantaneous pulses in the signal equations"}
-	if s.Efficiency != 0 && s.Efficiency != 1 {
-		n = append(n, fmt.Sprintf("inversion efficiency %g", s.Efficiency))
-	}
+	n := render.Assumes(s)
 	if x.Speed > 1 {
 		n = append(n, fmt.Sprintf("acceleration %g by undersampling counts as noise only (g = %g, sqrt R): no residual aliasing", x.Speed, x.GFactor))
 	}

@@ -1,6 +1,7 @@
 package acquire
 
 import (
+	"math"
 	"math/cmplx"
 
 	"voxelproof/maps"
@@ -67,6 +68,7 @@ type voxels struct {
 	low    float64   // Hz, centre of the first band
 	width  float64   // Hz between band centres
 	times  []float64 // EPI: mean time of each group
+	fields *synth.Fields
 }
 
 // groups is the number of times along an EPI train at which a voxel's own
@@ -78,6 +80,14 @@ const maxBands = 256
 
 func newVoxels(o *Object, x *Signals) *voxels {
 	v := &voxels{o: o, x: x, echoes: 1, bands: 1}
+	normal := x.p.Axes[2]
+	// Sheets of a slice add up with their own phases; within one voxel of the maps
+	// the phase is averaged.
+	across := 0.0
+	for a, d := range o.set.Grid.Dir {
+		across += math.Abs(d[0]*normal[0]+d[1]*normal[1]+d[2]*normal[2]) * o.set.Grid.Spacing[a]
+	}
+	v.fields = synth.NewFields(o.set, normal, synth.Slice{Thickness: x.p.Thickness, Across: across})
 	for _, e := range x.p.Lines.Echo {
 		v.echoes = max(v.echoes, e+1)
 	}
@@ -119,13 +129,8 @@ func (v *voxels) id(channel int, fat bool, echo, band, imag int) int32 {
 }
 
 func (v *voxels) expand(n int, dst []share) []share {
-	var c synth.Condition
-	if b := v.o.set.Volume(maps.B0); b != nil {
-		c.B0 = float64(b.Data[n])
-	}
-	if b := v.o.set.Volume(maps.B1); b != nil {
-		c.B1 = float64(b.Data[n])
-	}
+	at := v.o.set.Grid.IJK(n)
+	c := v.fields.At(at[0], at[1], at[2])
 	if v.o.set.Mixture == nil {
 		if t := v.o.set.Tissue(n); t.PD > 0 {
 			dst = v.tissue(dst, t, c, 1)

@@ -8,13 +8,13 @@ import (
 )
 
 // record returns what files and tickets say about a scan.
-func record(p *synth.Protocol, s synth.Scan) maps.Acquisition {
+func record(p *synth.Protocol, s synth.Scan, fields bool) maps.Acquisition {
 	a := maps.Acquisition{
 		Timing: s.Timing, Name: s.Name, Protocol: p.Name, Sequence: string(s.Sequence), Field: p.Field,
 		BodyPart: p.BodyPart, Weighting: weighting(s), Seed: s.Seed,
 		SNR: s.Noise.SNR, SNRTissue: s.Noise.Tissue,
 		EchoTrainLength: 1, Averages: 1,
-		Notes: append(notes(s), limits...),
+		Notes: append(notes(s), limits(fields)...),
 	}
 	if s.Train.Length > 0 {
 		a.EchoTrainLength, a.EchoSpacing = s.Train.Length, s.Train.Spacing
@@ -50,19 +50,22 @@ func record(p *synth.Protocol, s synth.Scan) maps.Acquisition {
 	return a
 }
 
-// limits is what no voxel-level image shows.
-var limits = []string{
-	"voxel level: no k-space, so no blur, truncation, chemical shift, distortion or partial Fourier; resolution is that of the maps",
-	"left out: flow and pulsation, motion, magnetisation transfer, slice cross-talk, slice profile, coil shading",
-	"left out: anisotropy, exchange and multi-component relaxation within a tissue",
+// limits lists what a voxel-level image does not show.
+func limits(fields bool) []string {
+	out := []string{
+		"voxel level: no k-space, so no blur, truncation, chemical shift, distortion or partial Fourier; resolution is that of the maps",
+	}
+	if fields {
+		out = append(out, "left out: pulsation, motion, magnetisation transfer, slice cross-talk; fields as far as they were given or modelled")
+	} else {
+		out = append(out, "left out: flow and pulsation, motion, magnetisation transfer, slice cross-talk, coil shading, field inhomogeneity")
+	}
+	return append(out, "left out: anisotropy, exchange and multi-component relaxation within a tissue")
 }
 
 // notes lists what the scan's own numbers assume.
 func notes(s synth.Scan) []string {
-	n := []string{"ideal spoiling before each excitation; instantaneous pulses"}
-	if s.Efficiency != 0 {
-		n = append(n, fmt.Sprintf("inversion efficiency %g", s.Efficiency))
-	}
+	n := Assumes(s)
 	if s.Prep.FatMethod != "" {
 		n = append(n, fmt.Sprintf("fat suppression of efficiency %g", s.Prep.FatEfficiency))
 	}

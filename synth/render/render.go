@@ -6,6 +6,7 @@ package render
 import (
 	"fmt"
 	"math"
+	"sync"
 
 	"voxelproof/maps"
 	"voxelproof/synth"
@@ -13,7 +14,7 @@ import (
 
 // EngineVersion enters every identity and file. It is bumped whenever any
 // output bit changes; a golden test fails otherwise.
-const EngineVersion = "1"
+const EngineVersion = "2"
 
 // Series returns the series of scan number index (from 0) of a checked
 // protocol, one per image kind, over the whole volume. Pixels are made when
@@ -35,6 +36,12 @@ func Series(set *maps.Set, p *synth.Protocol, index int) ([]maps.Series, error) 
 	if r.grid, r.view, err = set.Grid.View(scan.Plane); err != nil {
 		return nil, err
 	}
+	thickness := r.grid.Spacing[2]
+	if scan.Geometry.Thickness > 0 && !scan.Geometry.Volume3D {
+		thickness = scan.Geometry.Thickness
+	}
+	r.fields = synth.NewFields(set, r.grid.Dir[2], synth.Slice{Thickness: thickness, Across: thickness})
+	r.voxelModel = sync.OnceValue(func() *synth.Model { return model.Tabulated(set, r.fields) })
 	if err := r.prepare(); err != nil {
 		return nil, err
 	}
@@ -45,7 +52,7 @@ func Series(set *maps.Set, p *synth.Protocol, index int) ([]maps.Series, error) 
 	for _, kind := range scan.Images {
 		h := maps.Header{
 			Grid: r.grid, Plane: scan.Plane, Kind: kind, Number: index + 1,
-			Scan: record(p, scan), Tissues: r.predict(kind), Origin: set.Origin,
+			Scan: record(p, scan, r.fields != nil), Tissues: r.predict(kind), Origin: set.Origin,
 		}
 		h.Scan.Sigma = r.sigma
 		out = append(out, maps.Series{Header: h, Source: source{r, kind}})
@@ -63,6 +70,11 @@ type renderer struct {
 	grid   maps.Grid
 	view   maps.View
 	sigma  float64
+	fields *synth.Fields // nil = none
+
+	// voxelModel is the model for voxels with values of their own, made on first
+	// use.
+	voxelModel func() *synth.Model
 
 	// Of a mixture without fields: what each tissue contributes per unit
 	// fraction, per channel, and how that changes per unit of texture.

@@ -31,7 +31,7 @@ func (s source) Slice(ctx context.Context, k int, dst []float32) error {
 	for c := range planes {
 		planes[c] = make([]complex128, len(dst))
 	}
-	if s.set.Mixture != nil && !s.hasFields() {
+	if s.set.Mixture != nil && s.fields == nil {
 		s.mixture(k, planes)
 	} else {
 		s.perVoxel(k, planes)
@@ -53,11 +53,6 @@ func (s source) Slice(ctx context.Context, k int, dst []float32) error {
 		dst[n] = float32(s.model.Combine(s.kind, ch))
 	}
 	return nil
-}
-
-// hasFields reports whether the signal of a tissue differs from place to place.
-func (r *renderer) hasFields() bool {
-	return r.set.Volume(maps.B0) != nil || r.set.Volume(maps.B1) != nil
 }
 
 // mixture adds up tissue signals by their fractions: S = flat + u slope, where
@@ -153,7 +148,7 @@ func (r *renderer) texture(k int) []float32 {
 // mixture, or any object with fields.
 func (r *renderer) perVoxel(k int, planes [][]complex128) {
 	set, size := r.set, r.set.Grid.Size
-	b0, b1 := set.Volume(maps.B0), set.Volume(maps.B1)
+	model := r.voxelModel()
 	ch := make([]complex128, len(planes))
 	var parts []maps.Part
 	var texture []float32
@@ -165,16 +160,10 @@ func (r *renderer) perVoxel(k int, planes [][]complex128) {
 		for i := range r.grid.Size[0] {
 			s := r.view.Source(size, [3]int{i, j, k})
 			v := set.Grid.Index(s[0], s[1], s[2])
-			var c synth.Condition
-			if b0 != nil {
-				c.B0 = float64(b0.Data[v])
-			}
-			if b1 != nil {
-				c.B1 = float64(b1.Data[v])
-			}
+			c := r.fields.At(s[0], s[1], s[2])
 			if set.Mixture == nil {
 				if t := set.Tissue(v); t.PD > 0 {
-					r.model.Signal(ch, t, c)
+					model.Signal(ch, t, c)
 					for q := range ch {
 						planes[q][n] = ch[q]
 					}
@@ -186,7 +175,7 @@ func (r *renderer) perVoxel(k int, planes [][]complex128) {
 					if texture != nil {
 						t = t.At(float64(texture[n]))
 					}
-					r.model.Signal(ch, t, c)
+					model.Signal(ch, t, c)
 					for q := range ch {
 						planes[q][n] += ch[q] * complex(float64(p.Fraction)/maps.Whole, 0)
 					}

@@ -34,7 +34,7 @@ func SpoiledGREPulse(p maps.Pool, t maps.Timing, n int) float64 {
 	return mz * math.Sin(t.Flip) * math.Exp(-t.TE/p.T2Star)
 }
 
-// RFSpoiledGRE returns the magnitude of the signal per unit PD of a gradient
+// RFSpoiledGRE returns the magnitude (with the sign of sin(t.Flip)) of the signal per unit PD of a gradient
 // echo that is spoiled as scanners do it: pulse phases k(k+1)/2 times increment
 // (rad, a whole multiple of 0.1 degrees; 117 and 50 degrees are usual) and
 // gradients that spread the voxel over a full turn in every t.TR. Not all
@@ -43,11 +43,11 @@ func SpoiledGREPulse(p maps.Pool, t maps.Timing, n int) float64 {
 //
 //	S = |mean over isochromats of M+| exp(-TE/T2*)
 //
-// Times in s, angles in rad; result within 0..1.
+// Times in s, angles in rad; result within -1..1.
 // Limit: T2 << TR gives SpoiledGRE.
 // Source: derived here by exact propagators (package bloch).
 func RFSpoiledGRE(p maps.Pool, t maps.Timing, increment float64) float64 {
-	return cmplx.Abs(bloch.RFSpoiled(p, t, increment)) * math.Exp(-t.TE/p.T2Star)
+	return math.Copysign(cmplx.Abs(bloch.RFSpoiled(p, t, increment)), math.Sin(t.Flip)) * math.Exp(-t.TE/p.T2Star)
 }
 
 // ErnstAngle returns the flip angle in rad of the largest spoiled gradient

@@ -34,6 +34,8 @@ type objectFlags struct {
 	FullScale   float64  `group:"Object" help:"Value of a voxel that is wholly one tissue: 1, 100 or 255." placeholder:"NUMBER"`
 	Remainder   string   `group:"Object" help:"Tissue of what probability images leave inside the head." placeholder:"TISSUE"`
 
+	Fields []string `group:"Object" help:"Fields to model: b0 (susceptibility), b1 (transmit), coil (receive), flow (large vessels); repeat or separate by commas." placeholder:"NAME"`
+
 	Tissues    string `group:"Object" help:"File that adds tissues or replaces numbers of the tissue table." placeholder:"FILE"`
 	Field      string `group:"Object" help:"Field strength, such as '1.5 T'." placeholder:"FIELD"`
 	FromPerson bool   `group:"Object" help:"The maps come from a person, and images of them are intended." xor:"person"`
@@ -48,7 +50,7 @@ func (f objectFlags) object() (task.Object, error) {
 	o := task.Object{
 		Phantom: f.Phantom, Seed: f.Shape, Findings: f.Finding, Folder: f.Maps, Unit: f.Unit, PDUnit: f.PDUnit,
 		Labels: f.Labels, LabelList: f.LabelList, Full: f.FullScale, Remainder: f.Remainder, Tissues: f.Tissues,
-		Person: f.FromPerson, Synthetic: f.NoPerson, Defaced: f.Defaced, Unscaled: f.Unscaled, Resample: f.Resample,
+		Person: f.FromPerson, Synthetic: f.NoPerson, Defaced: f.Defaced, Unscaled: f.Unscaled, Resample: f.Resample, Fields: f.Fields,
 		Files: map[maps.Quantity]string{},
 	}
 	for q, file := range map[maps.Quantity]string{

@@ -48,6 +48,8 @@ type Object struct {
 	Defaced   bool
 	Unscaled  bool // take a NIfTI slope of 0 as "not scaled"
 	Resample  bool // put maps on the grid of the first
+
+	Fields []string // to be modelled, names from FieldNames
 }
 
 // Probability is a file of one tissue's share of each voxel.
@@ -61,6 +63,9 @@ type Loaded struct {
 	Notes     []string // what was odd
 	Inputs    []string // files that were read
 	Canonical string   // what it is, for identities
+
+	flows  bool                     // blood moves
+	planes map[maps.Plane]*maps.Set // with the speed of blood through their slices
 }
 
 // Load builds or reads the object.
@@ -99,6 +104,9 @@ func (o Object) Load(ctx context.Context, p Progress) (*Loaded, error) {
 		return nil, err
 	}
 	l.origin(o)
+	if err := l.fields(ctx, o, p); err != nil {
+		return nil, err
+	}
 	l.Canonical += fmt.Sprintf("field %g T\n", l.Set.Field)
 	return l, nil
 }

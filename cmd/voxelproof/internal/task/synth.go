@@ -193,7 +193,7 @@ func (s Synth) write(ctx context.Context, f *export.Folder, protocol *synth.Prot
 		req.Namespace = "voxelproof"
 	}
 	var tickets strings.Builder
-	object, make, err := s.maker(l)
+	in, make, err := s.maker(ctx, l)
 	if err != nil {
 		return nil, joinDiscard(err, f)
 	}
@@ -223,9 +223,9 @@ func (s Synth) write(ctx context.Context, f *export.Folder, protocol *synth.Prot
 	if len(req.Formats) == 0 && len(req.Slices) > 0 {
 		req.Formats = []export.Format{export.PNG, export.PNG16, export.DICOM}
 	}
-	montages := func() error { return s.montages(&req, l, protocol) }
-	if object != nil {
-		montages = func() error { return acquiredMontages(&req, protocol, object, centre(l)) }
+	montages := func() error { return s.montages(ctx, &req, l, protocol) }
+	if s.Level == acquired {
+		montages = func() error { return acquiredMontages(&req, protocol, in, centre(l)) }
 	}
 	if err := montages(); err != nil {
 		return nil, joinDiscard(err, f)
@@ -247,18 +247,39 @@ const (
 	acquired = "acquired"
 )
 
-// maker returns what makes the series of a scan at the level asked for, and the
-// object that keeps the transforms of the acquired level.
-func (s Synth) maker(l *Loaded) (*acquire.Object, func(*synth.Protocol, int) ([]maps.Series, error), error) {
+// maker returns what makes the series of a scan at the level asked for, and, of
+// the acquired level, the object that keeps the transforms for a plane: one for
+// all planes unless blood flows.
+func (s Synth) maker(ctx context.Context, l *Loaded) (in func(maps.Plane) (*acquire.Object, error), make func(*synth.Protocol, int) ([]maps.Series, error), err error) {
 	switch s.Level {
 	case "", voxel:
-		return nil, func(p *synth.Protocol, i int) ([]maps.Series, error) { return render.Series(l.Set, p, i) }, nil
+		return nil, func(p *synth.Protocol, i int) ([]maps.Series, error) {
+			set, err := l.seen(ctx, p.Scans[i].Plane)
+			if err != nil {
+				return nil, err
+			}
+			return render.Series(set, p, i)
+		}, nil
 	case acquired:
-		o, err := acquire.NewObject(l.Set)
-		if err != nil {
+		objects := map[*maps.Set]*acquire.Object{}
+		in = func(plane maps.Plane) (*acquire.Object, error) {
+			set, err := l.seen(ctx, plane)
+			if err != nil || objects[set] != nil {
+				return objects[set], err
+			}
+			objects[set], err = acquire.NewObject(set)
+			return objects[set], err
+		}
+		if _, err := in(maps.Axial); err != nil {
 			return nil, nil, err
 		}
-		return o, func(p *synth.Protocol, i int) ([]maps.Series, error) { return o.Series(p, i, acquire.Options{}) }, nil
+		return in, func(p *synth.Protocol, i int) ([]maps.Series, error) {
+			o, err := in(p.Scans[i].Plane)
+			if err != nil {
+				return nil, err
+			}
+			return o.Series(p, i, acquire.Options{})
+		}, nil
 	}
 	return nil, nil, usagef("level %q: want voxel or acquired", s.Level)
 }
@@ -266,7 +287,7 @@ func (s Synth) maker(l *Loaded) (*acquire.Object, func(*synth.Protocol, int) ([]
 // acquiredMontages adds one labelled sheet per plane: the slice of each series
 // next to the focus, and one slice through it in the planes that were not
 // scanned.
-func acquiredMontages(req *export.Request, p *synth.Protocol, o *acquire.Object, focus maps.Vec) error {
+func acquiredMontages(req *export.Request, p *synth.Protocol, in func(maps.Plane) (*acquire.Object, error), focus maps.Vec) error {
 	for plane := maps.Axial; plane <= maps.Sagittal; plane++ {
 		q := export.MontageRequest{Title: fmt.Sprintf("%s, %s, as acquired", p.Name, plane)}
 		for i, scan := range p.Scans {
@@ -277,6 +298,10 @@ func acquiredMontages(req *export.Request, p *synth.Protocol, o *acquire.Object,
 				}
 			}
 			if series == nil {
+				o, err := in(plane)
+				if err != nil {
+					return err
+				}
 				turned := *p
 				turned.Scans = append([]synth.Scan(nil), p.Scans...)
 				scan.Plane, scan.Geometry.Slices, scan.Geometry.PhaseAxis, scan.Geometry.Angles = plane, 1, "", [3]float64{}
@@ -290,7 +315,6 @@ func acquiredMontages(req *export.Request, p *synth.Protocol, o *acquire.Object,
 					}
 				}
 				turned.Scans[i] = scan
-				var err error
 				if series, err = o.Series(&turned, i, acquire.Options{}); err != nil {
 					return err
 				}
@@ -308,7 +332,7 @@ func acquiredMontages(req *export.Request, p *synth.Protocol, o *acquire.Object,
 
 // montages adds one labelled sheet per plane, through the middle of the object
 // or through its findings.
-func (s Synth) montages(req *export.Request, l *Loaded, protocol *synth.Protocol) error {
+func (s Synth) montages(ctx context.Context, req *export.Request, l *Loaded, protocol *synth.Protocol) error {
 	focus := centre(l)
 	for plane := maps.Axial; plane <= maps.Sagittal; plane++ {
 		q := export.MontageRequest{Title: fmt.Sprintf("%s, %s", protocol.Name, plane)}
@@ -316,7 +340,11 @@ func (s Synth) montages(req *export.Request, l *Loaded, protocol *synth.Protocol
 			turned := *protocol
 			turned.Scans = append([]synth.Scan(nil), protocol.Scans...)
 			turned.Scans[i].Plane = plane
-			series, err := render.Series(l.Set, &turned, i)
+			set, err := l.seen(ctx, plane)
+			if err != nil {
+				return err
+			}
+			series, err := render.Series(set, &turned, i)
 			if err != nil {
 				return err
 			}
