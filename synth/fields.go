@@ -13,7 +13,6 @@ type Condition struct {
 	B1       float64 // flip angle obtained / nominal; 0 = 1
 	Gradient float64 // Hz of B0 across the slice thickness
 	Flow     float64 // 1/s, slice thicknesses that the water moves through the slice per second
-	Receive  float64 // sensitivity of the receive coil, relative; 0 = 1
 }
 
 // Fields are the maps of a set that make the signal of a tissue differ from
@@ -21,7 +20,6 @@ type Condition struct {
 type Fields struct {
 	grid         maps.Grid
 	b0, b1, flow *maps.Volume
-	coil         *maps.Volume
 	along        maps.Vec // slice normal in steps of the grid's axes, times the extent
 	thickness    float64  // mm
 }
@@ -31,8 +29,8 @@ type Fields struct {
 // the phase of B0 has to be averaged within a voxel. It returns nil if the set
 // has no field.
 func NewFields(set *maps.Set, normal maps.Vec, s Slice) *Fields {
-	f := &Fields{grid: set.Grid, b0: set.Volume(maps.B0), b1: set.Volume(maps.B1), flow: set.Volume(maps.Velocity), coil: set.Volume(maps.Coil), thickness: s.Thickness}
-	if f.b0 == nil && f.b1 == nil && f.flow == nil && f.coil == nil {
+	f := &Fields{grid: set.Grid, b0: set.Volume(maps.B0), b1: set.Volume(maps.B1), flow: set.Volume(maps.Velocity), thickness: s.Thickness}
+	if f.b0 == nil && f.b1 == nil && f.flow == nil {
 		return nil
 	}
 	for a := range 3 {
@@ -72,9 +70,6 @@ func (f *Fields) At(i, j, k int) Condition {
 	}
 	if f.flow != nil && f.thickness > 0 {
 		c.Flow = float64(f.flow.Data[n]) / f.thickness
-	}
-	if f.coil != nil {
-		c.Receive = float64(f.coil.Data[n])
 	}
 	return c
 }

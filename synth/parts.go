@@ -20,10 +20,6 @@ type part struct {
 func (m *Model) parts(t maps.Tissue, c Condition, channel int) (water, fat part) {
 	water = part{t.PD * (1 - t.FatFraction) * m.stays(c), t.Pool}
 	fat = part{t.PD * t.FatFraction, t.Fat}
-	if c.Receive != 0 {
-		water.pd *= c.Receive
-		fat.pd *= c.Receive
-	}
 	if a := m.scan.Agent; a != nil && t.Uptake > 0 {
 		water.pool = signal.Enhance(water.pool, a.Dose*t.Uptake, a.R1, a.R2)
 	}

@@ -39,7 +39,7 @@ func NewObject(set *maps.Set) (*Object, error) {
 	}
 	o := &Object{set: set, cache: map[cacheKey]*encoded{}}
 	o.fields = set.Mixture == nil
-	for _, q := range []maps.Quantity{maps.B0, maps.B1, maps.Velocity, maps.Coil} {
+	for _, q := range []maps.Quantity{maps.B0, maps.B1, maps.Velocity} {
 		o.fields = o.fields || set.Volume(q) != nil
 	}
 	g := set.Grid

@@ -52,7 +52,7 @@ func Series(set *maps.Set, p *synth.Protocol, index int) ([]maps.Series, error) 
 	for _, kind := range scan.Images {
 		h := maps.Header{
 			Grid: r.grid, Plane: scan.Plane, Kind: kind, Number: index + 1,
-			Scan: record(p, scan, r.fields != nil), Tissues: r.predict(kind), Origin: set.Origin,
+			Scan: record(p, scan, r.fields != nil || set.Volume(maps.Coil) != nil), Tissues: r.predict(kind), Origin: set.Origin,
 		}
 		h.Scan.Sigma = r.sigma
 		out = append(out, maps.Series{Header: h, Source: source{r, kind}})

@@ -200,6 +200,24 @@ func TestFields(t *testing.T) {
 	}
 }
 
+// Receive sensitivity multiplies the signal and leaves the noise alone.
+func TestCoilShading(t *testing.T) {
+	plain := collect(t, object(t, true), gre)
+	set := object(t, true)
+	coil := maps.NewVolume(set.Grid)
+	for n := range coil.Data {
+		coil.Data[n] = 0.25
+	}
+	if err := set.Add(maps.Coil, coil); err != nil {
+		t.Fatal(err)
+	}
+	for n, x := range collect(t, set, gre).Data {
+		if want := plain.Data[n] / 4; math.Abs(float64(x-want)) > 1e-6 {
+			t.Fatalf("voxel %d = %g: want %g", n, x, want)
+		}
+	}
+}
+
 // The stated SNR is the predicted signal of the tissue over the SD of each
 // channel; the noise of the background is Rayleigh (mean sigma sqrt(pi/2),
 // Gudbjartsson and Patz, Magn Reson Med 34 (1995) 910, from memory).

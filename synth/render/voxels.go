@@ -36,6 +36,7 @@ func (s source) Slice(ctx context.Context, k int, dst []float32) error {
 	} else {
 		s.perVoxel(k, planes)
 	}
+	s.shade(k, planes)
 	if s.sigma > 0 {
 		for c, p := range planes {
 			key := noise.Key{Seed: s.scan.Seed, Scan: uint32(s.number) | uint32(c)<<16, Slice: uint32(k)}
@@ -53,6 +54,25 @@ func (s source) Slice(ctx context.Context, k int, dst []float32) error {
 		dst[n] = float32(s.model.Combine(s.kind, ch))
 	}
 	return nil
+}
+
+// shade multiplies by the sensitivity of the receive coil, if there is a map.
+func (r *renderer) shade(k int, planes [][]complex128) {
+	coil := r.set.Volume(maps.Coil)
+	if coil == nil {
+		return
+	}
+	n := 0
+	for j := range r.grid.Size[1] {
+		for i := range r.grid.Size[0] {
+			s := r.view.Source(r.set.Grid.Size, [3]int{i, j, k})
+			by := complex(float64(coil.Data[r.set.Grid.Index(s[0], s[1], s[2])]), 0)
+			for c := range planes {
+				planes[c][n] *= by
+			}
+			n++
+		}
+	}
 }
 
 // mixture adds up tissue signals by their fractions: S = flat + u slope, where
