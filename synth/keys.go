@@ -357,3 +357,20 @@ func keyNames() []string {
 	}
 	return names
 }
+
+// Variable returns a key of one quantity by name, for tools that vary it: its
+// dimension and where it is kept. An unknown key, or one that is no single
+// quantity, is an error.
+func Variable(name string) (*Dimension, func(*Scan) *float64, error) {
+	var names []string
+	for _, k := range keys {
+		if k.num == nil {
+			continue
+		}
+		if k.name == name {
+			return k.dim, k.num, nil
+		}
+		names = append(names, k.name)
+	}
+	return nil, nil, fmt.Errorf("key %q cannot be varied: want one of %s%s", name, strings.Join(names, ", "), maps.DidYouMean(name, names))
+}

@@ -92,3 +92,14 @@ func (d Dimension) Format(v float64) string {
 	// and every other dimension has a unit of factor 1.
 	return strconv.FormatFloat(v, 'g', -1, 64)
 }
+
+// Unit is the unit in which values of the dimension are shown; "" of a ratio.
+func (d Dimension) Unit() string { return d.units[0].name }
+
+// In returns a value in Unit.
+func (d Dimension) In(v float64) float64 {
+	if per := d.units[0].per; per < 0 {
+		return v / -per
+	}
+	return v * d.units[0].per
+}

@@ -37,6 +37,7 @@ type grammar struct {
 	Phantom phantomCmd `cmd:"" help:"List tissues and phantoms, build maps from them."`
 	Maps    mapsCmd    `cmd:"" help:"Describe, check, build and convert maps."`
 	Signal  signalCmd  `cmd:"" help:"Calculate signals, contrast, nulls and best timings of tissues."`
+	Curve   curveCmd   `cmd:"" help:"Draw signal and contrast against TE, TR, TI, flip, echo number and the like."`
 	Synth   synthCmd   `cmd:"" help:"Make the images of a protocol from maps or a phantom."`
 }
 

@@ -33,21 +33,9 @@ func (s Signal) Tables() ([]*calc.Table, error) {
 	if err != nil {
 		return nil, err
 	}
-	var tissues []maps.Tissue
-	for _, name := range s.Tissue {
-		var t maps.Tissue
-		if strings.Contains(name, "=") {
-			t, err = calc.ParseTissue(name)
-		} else {
-			t, err = table.Tissue(name, p.Field)
-		}
-		if err != nil {
-			return nil, Usage(err)
-		}
-		tissues = append(tissues, t)
-	}
-	if len(tissues) == 0 {
-		return nil, usagef("no tissue: want --tissue 'white matter' or --tissue 'T1=900ms T2=80ms'")
+	tissues, err := s.tissues(table, p.Field)
+	if err != nil {
+		return nil, err
 	}
 	var out []*calc.Table
 	for _, scan := range scans {
@@ -56,6 +44,28 @@ func (s Signal) Tables() ([]*calc.Table, error) {
 			return nil, err
 		}
 		out = append(out, t)
+	}
+	return out, nil
+}
+
+// tissues reads the tissues that were named.
+func (s Signal) tissues(table *phantom.Table, field float64) ([]maps.Tissue, error) {
+	var out []maps.Tissue
+	for _, name := range s.Tissue {
+		var t maps.Tissue
+		var err error
+		if strings.Contains(name, "=") {
+			t, err = calc.ParseTissue(name)
+		} else {
+			t, err = table.Tissue(name, field)
+		}
+		if err != nil {
+			return nil, Usage(err)
+		}
+		out = append(out, t)
+	}
+	if len(out) == 0 {
+		return nil, usagef("no tissue: want --tissue 'white matter' or --tissue 'T1=900ms T2=80ms'")
 	}
 	return out, nil
 }
