@@ -33,12 +33,13 @@ const (
 type grammar struct {
 	JSON bool `name:"json" help:"Print the result as JSON on stdout."`
 
-	Demo    demoCmd    `cmd:"" help:"Make a first set of proofs of the built-in head: pictures, DICOM, ticket, manifest."`
-	Phantom phantomCmd `cmd:"" help:"List tissues and phantoms, build maps from them."`
-	Maps    mapsCmd    `cmd:"" help:"Describe, check, build and convert maps."`
-	Signal  signalCmd  `cmd:"" help:"Calculate signals, contrast, nulls and best timings of tissues."`
-	Curve   curveCmd   `cmd:"" help:"Draw signal and contrast against TE, TR, TI, flip, echo number and the like."`
-	Synth   synthCmd   `cmd:"" help:"Make the images of a protocol from maps or a phantom."`
+	Demo     demoCmd     `cmd:"" help:"Make a first set of proofs of the built-in head: pictures, DICOM, ticket, manifest."`
+	Phantom  phantomCmd  `cmd:"" help:"List tissues and phantoms, build maps from them."`
+	Maps     mapsCmd     `cmd:"" help:"Describe, check, build and convert maps."`
+	Protocol protocolCmd `cmd:"" help:"List and print the built-in protocols."`
+	Signal   signalCmd   `cmd:"" help:"Calculate signals, contrast, nulls and best timings of tissues."`
+	Curve    curveCmd    `cmd:"" help:"Draw signal and contrast against TE, TR, TI, flip, echo number and the like."`
+	Synth    synthCmd    `cmd:"" help:"Make the images of a protocol from maps or a phantom."`
 }
 
 const description = `Proofs of MR protocols: what the images will look like, before scanner time is spent.

@@ -304,7 +304,10 @@ func acquiredMontages(req *export.Request, p *synth.Protocol, in func(maps.Plane
 				}
 				turned := *p
 				turned.Scans = append([]synth.Scan(nil), p.Scans...)
-				scan.Plane, scan.Geometry.Slices, scan.Geometry.PhaseAxis, scan.Geometry.Angles = plane, 1, "", [3]float64{}
+				scan.Plane, scan.Geometry.PhaseAxis, scan.Geometry.Angles = plane, "", [3]float64{}
+				if !scan.Geometry.Volume3D { // a slab keeps its partitions, along which its train may run
+					scan.Geometry.Slices = 1
+				}
 				for a, c := range o.Centre() {
 					scan.Geometry.Offset[a] = focus[a] - c
 				}
