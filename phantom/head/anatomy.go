@@ -1,6 +1,7 @@
 package head
 
 import (
+	"context"
 	"math"
 	"math/rand/v2"
 )
@@ -8,79 +9,137 @@ import (
 // anatomy is one head: its seeded proportions and fields. World axes are RAS+
 // in mm; the origin lies between the thalami.
 type anatomy struct {
-	scale      vec     // size of the head along each axis, about 1
-	ventricle  float64 // size of the ventricles, about 1
-	folds      *randomField
-	warpX      *randomField
-	warpY      *randomField
-	marbling   *randomField // fat between muscle fibres, air cells
-	fold       func(vec) float64
-	lesions    []lesion
-	sulcusHalf float64 // mm, half width of a sulcus
+	scale     vec          // size of the head along each axis, about 1
+	ventricle float64      // size of the ventricles, about 1
+	atrophy   float64      // 0 young .. 1 old: wider sulci and ventricles
+	folds     *randomField // of the sulci that reach deep
+	dimples   *randomField // of shallow ones between them
+	warpX     *randomField
+	warpY     *randomField
+	marbling  *randomField // fat between muscle fibres, air cells
+	lesions   []lesion
+
+	// Large smooth shapes, and the distance to the sheets of the sulci, are
+	// sampled once: at every point of a picture they would cost most of the time.
+	cavity, outline, fossa, cerebellum, deep, sulci, shallow *lattice
+	ventricles, stem, callosum                               *lattice // of the right side: their mirror images are the left
 }
 
-// newAnatomy draws the proportions of a seed.
-func newAnatomy(seed uint64) *anatomy {
+// proportions draws those of a seed.
+func proportions(seed uint64, atrophy float64) *anatomy {
 	r := rand.New(rand.NewPCG(seed, 11))
 	vary := func(by float64) float64 { return 1 + by*(2*r.Float64()-1) }
-	a := &anatomy{
-		scale:      vec{vary(0.03), vary(0.03), vary(0.03)},
-		ventricle:  vary(0.18),
-		folds:      newRandomField(seed, 21, 21, 30, 3.5),
-		warpX:      newRandomField(seed, 22, 22, 60, 3.5),
-		warpY:      newRandomField(seed, 23, 22, 60, 3.5),
-		marbling:   newRandomField(seed, 24, 5, 12, 1.2),
-		sulcusHalf: 0.45,
+	return &anatomy{
+		scale:     vec{vary(0.03), vary(0.03), vary(0.03)},
+		ventricle: vary(0.18) * (1 + 0.5*atrophy),
+		atrophy:   atrophy,
 	}
-	a.fold = func(p vec) float64 {
-		// Depth is compressed, so that the zero sheets of the field run inward
-		// from the surface instead of across it.
-		c := vec{0, -8, 8}
-		d := sub(p, c)
-		n := length(d) + 1e-9
-		depth := 78 - n
-		s := (78 - 0.35*depth) / n
-		q := vec{c[0] + d[0]*s, c[1] + d[1]*s, c[2] + d[2]*s}
-		w := 5.0
-		q[0] += w * a.warpX.at(q)
-		q[1] += w * a.warpY.at(q)
-		// The hemispheres fold differently.
-		if p[0] < 0 {
-			q[2] += 97
-		}
-		return a.folds.at(q)
-	}
-	return a
 }
 
-// cavity is the inside of the skull.
-func (a *anatomy) cavity(p vec) float64 {
+// newAnatomy makes the head of a seed, without findings.
+func newAnatomy(ctx context.Context, seed uint64, atrophy float64) (*anatomy, error) {
+	a := proportions(seed, atrophy)
+	fields := []struct {
+		dst          **randomField
+		stream       uint64
+		lo, hi, step float64
+	}{
+		{&a.folds, 21, 31, 35, 3.5}, {&a.dimples, 25, 25, 29, 3.5}, {&a.warpX, 22, 22, 60, 3.5}, {&a.warpY, 23, 22, 60, 3.5}, {&a.marbling, 24, 5, 12, 1.2},
+	}
+	err := parallel(ctx, len(fields), func(i int) {
+		f := fields[i]
+		*f.dst = newRandomField(seed, f.stream, f.lo, f.hi, f.step)
+	})
+	if err != nil {
+		return nil, err
+	}
+	lo, hi := vec{}, vec{}
+	for d := range 3 {
+		lo[d], hi[d] = 1.05*low[d], 1.05*high[d]
+	}
+	a.cavity, a.outline = newLattice(lo, hi, 3), newLattice(lo, hi, 3)
+	a.fossa, a.cerebellum = newLattice(vec{-66, -102, -74}, vec{66, 10, 8}, 2.5), newLattice(vec{-66, -102, -74}, vec{66, 10, 8}, 2.5)
+	a.deep = newLattice(vec{-52, -62, -30}, vec{52, 62, 52}, 2.5)
+	a.ventricles = newLattice(vec{0, -90, -40}, vec{54, 62, 52}, 1.5)
+	a.stem = newLattice(vec{0, -62, -130}, vec{32, 12, 14}, 1.5)
+	a.callosum = newLattice(vec{0, -58, -12}, vec{40, 58, 50}, 1.5)
+	a.sulci = newLattice(vec{-76, -104, -50}, vec{76, 86, 86}, 1.75)
+	a.shallow = newLattice(a.sulci.lo, vec{76, 86, 86}, 1.75)
+	for _, l := range []struct {
+		l *lattice
+		f func(vec) float64
+	}{
+		{a.fossa, a.posteriorFossaShape}, {a.cavity, a.cavityShape}, {a.outline, func(p vec) float64 { return a.outlineShape(p, a.cavity.at(p)) }},
+		{a.cerebellum, a.cerebellumShape}, {a.ventricles, a.ventriclesShape}, {a.stem, a.stemShape}, {a.callosum, a.callosumShape}, {a.deep, a.deepShape}, {a.sulci, func(p vec) float64 { return a.fold(p, a.folds) }}, {a.shallow, func(p vec) float64 { return a.fold(p, a.dimples) }},
+	} {
+		if err := l.l.fill(ctx, l.f); err != nil {
+			return nil, err
+		}
+	}
+	if err := a.shallow.signedDistance(ctx); err != nil {
+		return nil, err
+	}
+	return a, a.sulci.signedDistance(ctx)
+}
+
+// fold is the function whose zero surfaces are the sulci.
+func (a *anatomy) fold(p vec, f *randomField) float64 {
+	if a.cavity.at(p) < -4 {
+		return 1 // no brain there
+	}
+	// Depth is compressed, so that the sheets run inward from the surface instead
+	// of across it.
+	c := vec{0, -8, 8}
+	d := sub(p, c)
+	n := length(d) + 1e-9
+	depth := 78 - n
+	s := (78 - 0.35*depth) / n
+	q := vec{c[0] + d[0]*s, c[1] + d[1]*s, c[2] + d[2]*s}
+	const warp = 8.0
+	// Half the depth counts for the warp, so that sulci bend on their way.
+	w := vec{(p[0] + q[0]) / 2, (p[1] + q[1]) / 2, (p[2] + q[2]) / 2}
+	q[0] += warp * a.warpX.at(w)
+	q[1] += warp * a.warpY.at(w)
+	// The hemispheres fold differently.
+	if p[0] < 0 {
+		q[2] += 97
+	}
+	return f.at(q)
+}
+
+// cavityShape is the inside of the skull.
+func (a *anatomy) cavityShape(p vec) float64 {
 	m := mirrored(p)
 	vault := ellipsoid(p, vec{0, -8, 14}, vec{71, 89, 66})
 	// The floor rises over the orbits.
 	floor := p[2] + 14 - 0.10*max(p[1]-20, 0)
 	front := meet(vault, floor, 10)
 	temporal := ellipsoid(m, vec{38, 8, -16}, vec{30, 40, 27})
-	return join(join(front, temporal, 12), a.posteriorFossa(p), 10)
+	return join(join(front, temporal, 12), a.posteriorFossaShape(p), 10)
 }
 
-// posteriorFossa holds cerebellum and brain stem; its roof is the tentorium.
-func (a *anatomy) posteriorFossa(p vec) float64 {
-	return join(ellipsoid(mirrored(p), vec{16, -54, -33}, vec{38, 36, 27}), ellipsoid(p, vec{0, -20, -26}, vec{20, 17, 27}), 8)
+// posteriorFossaShape holds cerebellum and brain stem; its roof is the tentorium.
+func (a *anatomy) posteriorFossaShape(p vec) float64 {
+	tent := join(ellipsoid(mirrored(p), vec{16, -54, -33}, vec{38, 36, 25}), ellipsoid(p, vec{0, -52, -30}, vec{30, 33, 27}), 14)
+	return join(tent, ellipsoid(p, vec{0, -20, -26}, vec{20, 17, 27}), 8)
 }
 
 // canal is the spinal canal with the foramen magnum.
 func (a *anatomy) canal(p vec) float64 {
+	if p[2] > -18 {
+		return -reach
+	}
 	return canalPipe.at(p)
 }
 
 // cerebrum is the outer surface of the hemispheres, sulci not cut.
 func (a *anatomy) cerebrum(p vec, cavity float64) float64 {
-	return min(cavity-2.0, -a.posteriorFossa(p)-1.2)
+	// Fluid over the hemispheres is thicker above than at the base.
+	return min(cavity-1.2-0.8*min(max((p[2]+5)/25, 0), 1), -a.fossa.at(p)-1.2)
 }
 
-// stem is midbrain, pons, medulla and cord.
-func (a *anatomy) stem(p vec) float64 {
+// stemShape is midbrain, pons, medulla and cord.
+func (a *anatomy) stemShape(p vec) float64 {
 	m := mirrored(p)
 	midbrain := midbrainPipe.at(m)
 	pons := ellipsoid(p, vec{0, -17, -26}, vec{16, 13, 14})
@@ -88,10 +147,10 @@ func (a *anatomy) stem(p vec) float64 {
 	return join(join(midbrain, pons, 6), medulla, 6)
 }
 
-// cerebellum is its outer surface, folia not cut.
-func (a *anatomy) cerebellum(p vec) float64 {
+// cerebellumShape is its outer surface, folia not cut.
+func (a *anatomy) cerebellumShape(p vec) float64 {
 	m := mirrored(p)
-	return join(ellipsoid(m, vec{23, -56, -33}, vec{29, 33, 25}), ellipsoid(p, vec{0, -56, -28}, vec{14, 27, 25}), 6)
+	return join(ellipsoid(m, vec{20, -56, -32}, vec{34, 37, 29}), ellipsoid(p, vec{0, -56, -28}, vec{16, 30, 28}), 6)
 }
 
 // folia is the distance to the nearest fissure of the cerebellum.
@@ -110,8 +169,8 @@ func (a *anatomy) fourthVentricle(p vec) float64 {
 		aqueductPipe.at(p))
 }
 
-// ventricles are the lateral and the third ventricle.
-func (a *anatomy) ventricles(p vec) float64 {
+// ventriclesShape is the lateral and the third ventricle.
+func (a *anatomy) ventriclesShape(p vec) float64 {
 	m, s := mirrored(p), a.ventricle
 	if m[0] > 48 || p[2] > 46 || p[2] < -34 || p[1] > 56 || p[1] < -84 {
 		return -12
@@ -124,16 +183,16 @@ func (a *anatomy) ventricles(p vec) float64 {
 	return max(join(lateral, occipital, 3), third)
 }
 
-// callosum arches over the ventricles from side to side.
-func (a *anatomy) callosum(p vec) float64 {
+// callosumShape arches over the ventricles from side to side.
+func (a *anatomy) callosumShape(p vec) float64 {
 	flat := vec{max(math.Abs(p[0])-15, 0), p[1], p[2]}
 	return callosumPipe.within(flat, 8)
 }
 
-// deep is the part of the hemispheres that no sulcus reaches.
-func (a *anatomy) deep(p vec) float64 {
+// deepShape is the part of the hemispheres that no sulcus reaches.
+func (a *anatomy) deepShape(p vec) float64 {
 	m := mirrored(p)
-	return join(ellipsoid(m, vec{16, -2, 9}, vec{20, 38, 21}), a.callosum(p), 4)
+	return join(ellipsoid(m, vec{16, -2, 9}, vec{20, 38, 21}), a.callosumShape(p), 4)
 }
 
 // fissure is the distance to the great fissures: between the hemispheres and
@@ -142,7 +201,7 @@ func (a *anatomy) fissure(p vec) float64 {
 	m := mirrored(p)
 	// Between the hemispheres, above and around the callosum.
 	d := math.Abs(p[0])
-	if in := a.deep(vec{0, p[1], p[2]}); in > 0 {
+	if in := a.deep.at(vec{0, p[1], p[2]}); in > 0 {
 		d = math.Hypot(d, in)
 	}
 	// The Sylvian fissure: a sheet inward to the insula, and the sheet over it.
@@ -150,12 +209,12 @@ func (a *anatomy) fissure(p vec) float64 {
 	slope := -1 + 0.42*(6-y) + 2.5*a.warpX.at(p)
 	outward := max(40-m[0], 0, y-26, -26-y)
 	inlet := math.Hypot(z-slope, outward)
-	insula := math.Hypot(m[0]-40+0.006*(y-2)*(y-2), max(math.Abs(z-0.4*slope)-11, 0, y-22, -16-y))
+	insula := math.Hypot(m[0]-39+0.012*(y-2)*(y-2)-0.02*(z-0.4*slope)*(z-0.4*slope)-1.5*a.warpY.at(p), max(math.Abs(z-0.4*slope)-11, 0, y-22, -16-y))
 	return min(d, inlet, insula)
 }
 
-// outline is the skin.
-func (a *anatomy) outline(p vec, cavity float64) float64 {
+// outlineShape is the skin.
+func (a *anatomy) outlineShape(p vec, cavity float64) float64 {
 	m := mirrored(p)
 	scalp := cavity + 14.5
 	face := join(ellipsoid(p, vec{0, 46, -52}, vec{58, 50, 66}), ellipsoid(p, vec{0, 74, -88}, vec{27, 25, 24}), 18)

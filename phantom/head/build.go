@@ -21,7 +21,8 @@ type Spec struct {
 	Seed     uint64
 	Voxel    [3]float64 // mm along R, A and S; 0 = 1 mm
 	Field    float64    // T; 0 = 1.5 T
-	Findings []string   // names from Findings
+	Findings []string   // names from Findings, each alone or as "mass at 28 35 35 mm"
+	Atrophy  float64    // 0 (young) .. 1 (old): wider sulci and ventricles
 }
 
 // Head is a built head.
@@ -61,12 +62,17 @@ func Build(ctx context.Context, spec Spec, table *phantom.Table, progress func(d
 		return nil, fmt.Errorf("head: %.0f million voxels would need about %.1f GB: want at most %d million; use larger voxels",
 			voxels/1e6, voxels*10/1e9, maxVoxels>>20)
 	}
-	lesions, err := newLesions(spec.Findings, spec.Seed)
-	if err != nil {
-		return nil, fmt.Errorf("head: %w", err)
+	if !(spec.Atrophy >= 0 && spec.Atrophy <= 1) {
+		return nil, fmt.Errorf("head: atrophy = %g: want 0..1", spec.Atrophy)
+	}
+	for _, f := range spec.Findings {
+		if _, err := parseFinding(f); err != nil {
+			return nil, fmt.Errorf("head: %w", err)
+		}
 	}
 	tissues := make([]maps.Tissue, numTissues)
 	for i, n := range names {
+		var err error
 		if tissues[i], err = table.Tissue(n, spec.Field); err != nil {
 			return nil, fmt.Errorf("head: %w", err)
 		}
@@ -79,8 +85,17 @@ func Build(ctx context.Context, spec Spec, table *phantom.Table, progress func(d
 	if err != nil {
 		return nil, err
 	}
-	m.Texture = texture(spec.Seed)
-	an := newAnatomy(spec.Seed)
+	var an *anatomy
+	eg, inner := errgroup.WithContext(ctx)
+	eg.Go(func() error { m.Texture = texture(spec.Seed); return nil })
+	eg.Go(func() (err error) { an, err = newAnatomy(inner, spec.Seed, spec.Atrophy); return err })
+	if err := eg.Wait(); err != nil {
+		return nil, err
+	}
+	lesions, requests, err := newLesions(spec.Findings, spec.Seed, an)
+	if err != nil {
+		return nil, fmt.Errorf("head: %w", err)
+	}
 	an.lesions = lesions
 	if err := fill(ctx, m, an, progress); err != nil {
 		return nil, err
@@ -88,7 +103,32 @@ func Build(ctx context.Context, spec Spec, table *phantom.Table, progress func(d
 	set := maps.NewSet(g)
 	set.Mixture, set.Field = m, spec.Field
 	set.Origin = maps.Origin{Source: fmt.Sprintf("built-in numerical head, seed %d", spec.Seed), BodyPart: "HEAD"}
-	return &Head{Set: set, Findings: truth(m, spec.Findings)}, nil
+	return &Head{Set: set, Findings: truth(m, requests)}, nil
+}
+
+// Labels returns an image of the findings: n in voxels at least half filled by
+// the n-th of Findings, 0 elsewhere.
+func (h *Head) Labels() *maps.Volume {
+	m := h.Set.Mixture
+	out, sum := maps.NewVolume(m.Grid), make([]float32, m.Grid.SliceLen())
+	one := make([]float32, len(sum))
+	for i, f := range h.Findings {
+		for k := range m.Grid.Size[2] {
+			clear(sum)
+			for _, name := range f.Tissues {
+				m.Fractions(k, m.Tissue(name), one)
+				for n, x := range one {
+					sum[n] += x
+				}
+			}
+			for n, x := range sum {
+				if x >= 0.5 {
+					out.Slice(k)[n] = float32(i + 1)
+				}
+			}
+		}
+	}
+	return out
 }
 
 // fill samples every voxel, slices in parallel. Voxels longer than 2.2 mm are
@@ -120,8 +160,21 @@ func fill(ctx context.Context, m *maps.Mixture, an *anatomy, progress func(done,
 				if i < empty {
 					return dst
 				}
-				clear(sum)
 				outside := math.Inf(1)
+				if n == [3]int{1, 1, 1} {
+					outside = an.sample(g.World(maps.Vec{float64(i), float64(j), float64(k)}), &c)
+					if c.only < numTissues {
+						return append(dst, maps.Part{Tissue: uint8(c.only), Fraction: maps.Whole})
+					}
+					if c.only == mixed {
+						return maps.Apportion(dst, c.shares, 1)
+					}
+					if outside > 4 {
+						empty = i + int(outside/2/g.Spacing[0])
+					}
+					return dst
+				}
+				clear(sum)
 				for s := range n[0] * n[1] * n[2] {
 					at := maps.Vec{
 						float64(i) + (float64(s%n[0])+0.5)/float64(n[0]) - 0.5,
@@ -129,8 +182,12 @@ func fill(ctx context.Context, m *maps.Mixture, an *anatomy, progress func(done,
 						float64(k) + (float64(s/n[0]/n[1])+0.5)/float64(n[2]) - 0.5,
 					}
 					outside = min(outside, an.sample(g.World(at), &c))
-					for t, w := range c.shares {
-						sum[t] += w
+					if c.only < numTissues {
+						sum[c.only]++
+					} else if c.only == mixed {
+						for t, w := range c.shares {
+							sum[t] += w
+						}
 					}
 				}
 				// Far from the skin nothing can follow for half that distance: the
@@ -169,7 +226,7 @@ func texture(seed uint64) *maps.Volume {
 }
 
 // truth measures the findings as they were painted.
-func truth(m *maps.Mixture, findings []string) []Finding {
+func truth(m *maps.Mixture, findings []request) []Finding {
 	type sums struct {
 		n float64
 		c maps.Vec
@@ -177,8 +234,8 @@ func truth(m *maps.Mixture, findings []string) []Finding {
 	per := make([]sums, numTissues)
 	slice := make([]float32, m.Grid.SliceLen())
 	present := m.Volumes()
-	for _, name := range findings {
-		for _, t := range tissuesOf(name) {
+	for _, q := range findings {
+		for _, t := range tissuesOf(q.name) {
 			if present[t] == 0 || per[t].n > 0 {
 				continue
 			}
@@ -198,10 +255,10 @@ func truth(m *maps.Mixture, findings []string) []Finding {
 		}
 	}
 	var out []Finding
-	for _, name := range findings {
-		f := Finding{Name: name}
+	for _, q := range findings {
+		f := Finding{Name: q.name}
 		var n float64
-		for _, t := range tissuesOf(name) {
+		for _, t := range tissuesOf(q.name) {
 			f.Tissues = append(f.Tissues, names[t])
 			n += per[t].n
 			for a := range 3 {

@@ -5,6 +5,7 @@ import (
 	"math"
 	"math/rand/v2"
 	"slices"
+	"strconv"
 	"strings"
 
 	"voxelproof/maps"
@@ -12,14 +13,16 @@ import (
 
 // Findings that a head can have.
 const (
-	Plaques = "plaques" // periventricular, in white matter
-	Infarct = "infarct" // acute, in the territory of the left middle cerebral artery
-	Mass    = "mass"    // right frontal, with oedema around it
-	Lacune  = "lacune"  // right putamen
+	Plaques    = "plaques"      // 7..11 periventricular ones, some enhancing
+	Infarct    = "infarct"      // acute, in the territory of the left middle cerebral artery
+	Mass       = "mass"         // right frontal, with rim, necrosis and oedema around it
+	Lacune     = "lacune"       // right putamen
+	Bleeds     = "micro-bleeds" // 5..9 of 1..2.2 mm, short T2* only
+	Meningioma = "meningioma"   // extra-axial, on the left convexity
 )
 
 // Findings lists the names.
-func Findings() []string { return []string{Plaques, Infarct, Mass, Lacune} }
+func Findings() []string { return []string{Plaques, Infarct, Mass, Lacune, Bleeds, Meningioma} }
 
 // Finding is the ground truth of one finding.
 type Finding struct {
@@ -34,42 +37,170 @@ type lesion interface {
 	paint(a *anatomy, p vec, c *canvas)
 }
 
-// newLesions draws the findings of a seed.
-func newLesions(names []string, seed uint64) ([]lesion, error) {
-	var out []lesion
-	for i, n := range names {
-		if slices.Contains(names[:i], n) {
-			return nil, fmt.Errorf("finding %q is given twice", n)
+// request is a finding asked for: a name, and a place in anatomical mm if one
+// was given.
+type request struct {
+	name   string
+	at     vec
+	placed bool
+}
+
+// parseFinding reads "mass" or "mass at 30 35 35 mm" (right, anterior,
+// superior).
+func parseFinding(text string) (request, error) {
+	name, place, placed := strings.Cut(strings.TrimSpace(text), " at ")
+	r := request{name: strings.TrimSpace(name), placed: placed}
+	if !slices.Contains(Findings(), r.name) {
+		return r, fmt.Errorf("unknown finding %q: want %s%s", r.name, strings.Join(Findings(), ", "), maps.DidYouMean(r.name, Findings()))
+	}
+	if !placed {
+		return r, nil
+	}
+	numbers, unit := strings.CutSuffix(strings.TrimSpace(place), "mm")
+	f := strings.Fields(numbers)
+	if !unit || len(f) != 3 {
+		return r, fmt.Errorf("finding %q: place %q: want three numbers and mm, right anterior superior, such as %s at 28 35 35 mm", text, place, r.name)
+	}
+	for a := range 3 {
+		v, err := strconv.ParseFloat(f[a], 64)
+		if err != nil || !(math.Abs(v) <= 500) {
+			return r, fmt.Errorf("finding %q: %q: want a number of mm within -500..500", text, f[a])
 		}
-		r := rand.New(rand.NewPCG(seed, 31+uint64(slices.Index(Findings(), n))))
-		between := func(lo, hi float64) float64 { return lo + (hi-lo)*r.Float64() }
-		switch n {
-		case Plaques:
-			var b blobs
-			// Along the lateral ventricles, long axis pointing away from them.
-			for range 7 + r.IntN(5) {
-				side := float64(1 - 2*r.IntN(2))
-				t := r.Float64()
-				b.at = append(b.at, vec{side * between(16, 25), 34 - 70*t, between(19, 30) - 10*math.Abs(t-0.4)})
-				size := between(2.2, 4.2)
-				b.r = append(b.r, vec{size * 1.5, size, size})
+		r.at[a] = v
+	}
+	return r, nil
+}
+
+// newLesions draws the findings of a seed into a head that has none yet.
+func newLesions(findings []string, seed uint64, a *anatomy) ([]lesion, []request, error) {
+	var out []lesion
+	var requests []request
+	for _, text := range findings {
+		q, err := parseFinding(text)
+		if err != nil {
+			return nil, nil, err
+		}
+		if slices.ContainsFunc(requests, func(o request) bool { return o.name == q.name }) {
+			return nil, nil, fmt.Errorf("finding %q is given twice", q.name)
+		}
+		if q.placed {
+			for d := range 3 { // from the world to the proportions of this head
+				q.at[d] /= a.scale[d]
 			}
-			out = append(out, b)
-		case Infarct:
-			out = append(out, territory{centre: vec{-46, between(-12, 2), between(22, 28)}, r: vec{between(17, 20), between(20, 25), between(17, 21)}})
-		case Mass:
-			out = append(out, tumour{vec{between(27, 31), between(32, 38), between(32, 38)}, between(11, 14)})
-		case Lacune:
-			out = append(out, hole{vec{27, between(2, 10), between(2, 7)}, between(2.5, 3.5)})
-		default:
-			return nil, fmt.Errorf("unknown finding %q: want %s%s", n, strings.Join(Findings(), ", "), maps.DidYouMean(n, Findings()))
+			if what := a.tissueAt(q.at); !slices.Contains(brainTissues, what) && q.name != Meningioma {
+				where := "air"
+				if what != numTissues {
+					where = names[what]
+				}
+				return nil, nil, fmt.Errorf("finding %q lies outside the brain (in %s): want a place such as %s at 28 35 35 mm", text, where, q.name)
+			}
+		}
+		requests = append(requests, q)
+		r := rand.New(rand.NewPCG(seed, 31+uint64(slices.Index(Findings(), q.name))))
+		l, err := newLesion(q, r, a)
+		if err != nil {
+			return nil, nil, fmt.Errorf("finding %q: %w", text, err)
+		}
+		out = append(out, l)
+	}
+	return out, requests, nil
+}
+
+// brainTissues are those in which a finding may be placed.
+var brainTissues = []tissue{cortex, whiteMatter, caudate, putamen, pallidum, thalamus, brainStem, redNucleus, substantiaNigra, dentate}
+
+// tissueAt is the tissue that fills most of a point.
+func (a *anatomy) tissueAt(p vec) tissue {
+	c := canvas{shares: make([]float64, numTissues), edge: 0.5}
+	a.sample(vec{p[0] * a.scale[0], p[1] * a.scale[1], p[2] * a.scale[2]}, &c)
+	if c.only != mixed {
+		return c.only
+	}
+	best := tissue(0)
+	for t, f := range c.shares {
+		if f > c.shares[best] {
+			best = tissue(t)
 		}
 	}
-	return out, nil
+	return best
+}
+
+func newLesion(q request, r *rand.Rand, a *anatomy) (lesion, error) {
+	between := func(lo, hi float64) float64 { return lo + (hi-lo)*r.Float64() }
+	place := func(usual vec) vec {
+		if q.placed {
+			return q.at
+		}
+		return usual
+	}
+	switch q.name {
+	case Plaques:
+		var b blobs
+		// Along the lateral ventricles, long axis pointing away from them; every
+		// third takes up contrast agent.
+		for i := range 7 + r.IntN(5) {
+			side := float64(1 - 2*r.IntN(2))
+			t := r.Float64()
+			at := vec{side * between(16, 25), 34 - 70*t, between(19, 30) - 10*math.Abs(t-0.4)}
+			size := between(2.2, 4.2)
+			if i == 0 {
+				at = place(at)
+			}
+			b.at, b.r = append(b.at, at), append(b.r, vec{size * 1.5, size, size})
+		}
+		return b, nil
+	case Infarct:
+		at := vec{-46, between(-12, 2), between(22, 28)}
+		return territory{centre: place(at), r: vec{between(17, 20), between(20, 25), between(17, 21)}}, nil
+	case Mass:
+		at := vec{between(27, 31), between(32, 38), between(32, 38)}
+		return tumour{place(at), between(11, 14)}, nil
+	case Lacune:
+		at := vec{27, between(2, 10), between(2, 7)}
+		return hole{place(at), between(2.5, 3.5)}, nil
+	case Bleeds:
+		var s specks
+		n := 5 + r.IntN(5)
+		if q.placed {
+			s.at, s.r = append(s.at, q.at), append(s.r, between(1, 2.2))
+		}
+		for tries := 0; len(s.at) < n && tries < 1000; tries++ {
+			at := vec{between(-60, 60), between(-80, 60), between(-20, 60)}
+			if slices.Contains(brainTissues, a.tissueAt(at)) {
+				s.at, s.r = append(s.at, at), append(s.r, between(1, 2.2))
+			}
+		}
+		return s, nil
+	}
+	// A meningioma sits on the inside of the dura: outward from the middle of the
+	// head to where the cavity ends.
+	dir := vec{-0.72, between(0.1, 0.4), between(0.45, 0.6)}
+	size := between(11, 15)
+	if q.placed {
+		dir = sub(q.at, vec{0, -8, 14})
+	}
+	n := length(dir)
+	if q.placed && n < 1 {
+		return nil, fmt.Errorf("its place is the middle of the head: want one near the skull")
+	}
+	for s := 20.0; s < 120; s += 0.25 {
+		p := vec{dir[0] / n * s, -8 + dir[1]/n*s, 14 + dir[2]/n*s}
+		if a.cavity.at(p) <= 0 {
+			inward := s - 0.62*size
+			return attached{vec{dir[0] / n * inward, -8 + dir[1]/n*inward, 14 + dir[2]/n*inward}, size}, nil
+		}
+	}
+	return nil, fmt.Errorf("no dura in its direction")
 }
 
 // share is how much of the sample the given tissues fill.
 func (c *canvas) share(ts ...tissue) float64 {
+	if c.only != mixed {
+		if slices.Contains(ts, c.only) {
+			return 1
+		}
+		return 0
+	}
 	var sum float64
 	for _, t := range ts {
 		sum += c.shares[t]
@@ -84,10 +215,25 @@ func (c *canvas) replace(d float64, pairs ...[2]tissue) {
 		return
 	}
 	for _, p := range pairs {
-		moved := f * c.shares[p[0]]
-		c.shares[p[0]] -= moved
-		c.shares[p[1]] += moved
+		switch {
+		case c.only == p[0] && f == 1:
+			c.only = p[1]
+		case c.only == p[0] || c.only == mixed:
+			c.mix()
+			moved := f * c.shares[p[0]]
+			c.shares[p[0]] -= moved
+			c.shares[p[1]] += moved
+		}
 	}
+}
+
+// all pairs every tissue of the brain, and fluid, with one that takes its place.
+func all(to tissue, more ...tissue) [][2]tissue {
+	var out [][2]tissue
+	for _, t := range append(slices.Clone(brainTissues), more...) {
+		out = append(out, [2]tissue{t, to})
+	}
+	return out
 }
 
 type blobs struct{ at, r []vec }
@@ -96,18 +242,22 @@ func (b blobs) paint(_ *anatomy, p vec, c *canvas) {
 	if c.share(whiteMatter) == 0 {
 		return
 	}
-	d := math.Inf(-1)
 	for i := range b.at {
-		d = max(d, ellipsoid(p, b.at[i], b.r[i]))
+		if d := blob(p, b.at[i], b.r[i]); d > -clearance {
+			t := plaque
+			if i%3 == 0 {
+				t = enhancingPlaque
+			}
+			c.replace(d, [2]tissue{whiteMatter, t})
+		}
 	}
-	c.replace(d, [2]tissue{whiteMatter, plaque})
 }
 
 // territory is a wedge of brain with an uneven border.
 type territory struct{ centre, r vec }
 
 func (t territory) paint(a *anatomy, p vec, c *canvas) {
-	d := ellipsoid(p, t.centre, t.r)
+	d := blob(p, t.centre, t.r)
 	if d < -5 {
 		return
 	}
@@ -126,10 +276,12 @@ func (t tumour) paint(a *anatomy, p vec, c *canvas) {
 		return
 	}
 	d += 1.6 * a.warpX.at(vec{p[0] * 2, p[1] * 2, p[2] * 2})
-	// Oedema follows the white matter.
+	// Oedema follows the white matter; the rim takes up contrast agent, what is
+	// dead within does not.
 	c.replace(d+8+3*a.warpY.at(p), [2]tissue{whiteMatter, oedema})
-	c.replace(d, [2]tissue{whiteMatter, massCore}, [2]tissue{oedema, massCore}, [2]tissue{cortex, massCore}, [2]tissue{csf, massCore})
-	c.replace(d-0.55*t.r, [2]tissue{massCore, necrosis})
+	c.replace(d, all(massRim, oedema, csf)...)
+	c.replace(d-0.22*t.r, [2]tissue{massRim, massCore})
+	c.replace(d-0.5*t.r, [2]tissue{massCore, necrosis})
 }
 
 type hole struct {
@@ -138,18 +290,52 @@ type hole struct {
 }
 
 func (h hole) paint(_ *anatomy, p vec, c *canvas) {
-	c.replace(h.r-length(sub(p, h.centre)), [2]tissue{putamen, lacune}, [2]tissue{whiteMatter, lacune})
+	c.replace(h.r-length(sub(p, h.centre)), all(lacune)...)
+}
+
+// specks are small spheres.
+type specks struct {
+	at []vec
+	r  []float64
+}
+
+func (s specks) paint(_ *anatomy, p vec, c *canvas) {
+	for i := range s.at {
+		if d := s.r[i] - length(sub(p, s.at[i])); d > -2 {
+			c.replace(d, all(microBleed)...)
+		}
+	}
+}
+
+// attached is a growth outside the brain, with a cleft of fluid around it.
+type attached struct {
+	centre vec
+	r      float64
+}
+
+func (g attached) paint(a *anatomy, p vec, c *canvas) {
+	d := g.r - length(sub(p, g.centre))
+	if d < -4 {
+		return
+	}
+	d = min(d+1.2*a.warpX.at(vec{p[0] * 2, p[1] * 2, p[2] * 2}), a.cavity.at(p))
+	c.replace(d+0.8, all(csf)...)
+	c.replace(d, [2]tissue{csf, meningioma})
 }
 
 // tissuesOf lists what a finding is made of.
 func tissuesOf(name string) []tissue {
 	switch name {
 	case Plaques:
-		return []tissue{plaque}
+		return []tissue{plaque, enhancingPlaque}
 	case Infarct:
 		return []tissue{infarctWhite, infarctGrey}
 	case Mass:
-		return []tissue{massCore, necrosis, oedema}
+		return []tissue{massRim, massCore, necrosis, oedema}
+	case Bleeds:
+		return []tissue{microBleed}
+	case Meningioma:
+		return []tissue{meningioma}
 	}
 	return []tissue{lacune}
 }

@@ -2,59 +2,108 @@ package head
 
 import "math"
 
+// sulcusHalf is the half width of a sulcus at depth in mm.
+const sulcusHalf = 0.4
+
 // canvas collects the shares of one sampled point: each layer covers what lies
 // below it in proportion to how much of the sample it fills.
 type canvas struct {
-	shares []float64
-	left   float64 // weight of what lies below everything: void
-	edge   float64 // mm over which a surface passes through a sample
+	only   tissue    // the only tissue of the sample; mixed = see shares, numTissues = void
+	shares []float64 // of a mixed sample; what is left to 1 is void
+	edge   float64   // mm over which a surface passes through a sample
 }
 
-func (c *canvas) reset() {
+// mixed marks a sample of several tissues: most samples have one, and are
+// painted over many times, so shares are only written when there are several.
+const mixed = tissue(255)
+
+// mix writes the shares of a sample of one tissue.
+func (c *canvas) mix() {
+	if c.only == mixed {
+		return
+	}
 	clear(c.shares)
-	c.left = 1
+	if c.only != numTissues {
+		c.shares[c.only] = 1
+	}
+	c.only = mixed
 }
 
 // paint covers the sample with a tissue of signed distance d.
-func (c *canvas) paint(t tissue, d float64) {
-	f := d/c.edge + 0.5
-	if f <= 0 {
+func (c *canvas) paint(t tissue, d float64) { c.cover(t, d/c.edge+0.5) }
+
+// cover covers a share of the sample with a tissue.
+func (c *canvas) cover(t tissue, f float64) {
+	if f <= 0 || c.only == t {
 		return
 	}
 	if f >= 1 {
-		c.reset()
-		c.left = 0
-		c.shares[t] = 1
+		c.only = t
 		return
 	}
+	c.mix()
 	for i := range c.shares {
 		c.shares[i] *= 1 - f
 	}
-	c.left *= 1 - f
 	c.shares[t] += f
+}
+
+// within paints a tissue of signed distance d that lies inside a layer of host:
+// it takes the place of host first. Painted over host and what lies around it
+// alike, a layer thinner than a voxel would come out too thick.
+func (c *canvas) within(t tissue, d float64, host tissue) {
+	f := d/c.edge + 0.5
+	if f <= 0 || c.only == t {
+		return
+	}
+	if f >= 1 {
+		c.only = t
+		return
+	}
+	c.mix()
+	moved := min(f, c.shares[host])
+	c.shares[host] -= moved
+	c.shares[t] += moved
+	if rest, others := f-moved, 1-c.shares[t]; rest > 0 && others > 0 {
+		own := c.shares[t]
+		for i := range c.shares {
+			c.shares[i] *= 1 - rest/others
+		}
+		c.shares[t] = own + rest
+	}
+}
+
+// slab is the share of the sample within half of a sheet whose middle is x away.
+func (c *canvas) slab(x, half float64) float64 {
+	upto := func(d float64) float64 { return min(max(d/c.edge+0.5, 0), 1) }
+	return upto(half-x) - upto(-half-x)
 }
 
 // open removes what lies below, as air does.
 func (c *canvas) open(d float64) {
-	f := min(max(d/c.edge+0.5, 0), 1)
-	if f == 0 {
+	f := d/c.edge + 0.5
+	if f <= 0 || c.only == numTissues {
 		return
 	}
+	if f >= 1 {
+		c.only = numTissues
+		return
+	}
+	c.mix()
 	for i := range c.shares {
 		c.shares[i] *= 1 - f
 	}
-	c.left = c.left*(1-f) + f
 }
 
 // sample paints everything that may be at a point (mm, RAS+). It returns about
 // how far outside the head the point lies in mm, 0 within.
 func (a *anatomy) sample(world vec, c *canvas) float64 {
-	c.reset()
+	c.only = numTissues
 	p := vec{world[0] / a.scale[0], world[1] / a.scale[1], world[2] / a.scale[2]}
-	cavity := a.cavity(p)
+	cavity := a.cavity.at(p)
 	inner := max(cavity, a.canal(p))
 	if inner < c.edge {
-		outline := a.outline(p, cavity)
+		outline := a.outline.at(p)
 		if outline < -c.edge {
 			return -outline
 		}
@@ -66,7 +115,7 @@ func (a *anatomy) sample(world vec, c *canvas) float64 {
 	}
 	if inner > -2 {
 		c.paint(dura, inner+0.5)
-		c.paint(csf, inner)
+		c.within(csf, inner, dura)
 		a.brain(p, c, cavity)
 	}
 	return 0
@@ -75,20 +124,23 @@ func (a *anatomy) sample(world vec, c *canvas) float64 {
 // soft paints skin, fat and muscle.
 func (a *anatomy) soft(p vec, c *canvas, outline, cavity float64) {
 	c.paint(skin, outline)
-	c.paint(fat, outline-2)
+	c.within(fat, outline-2, skin)
+	if p[2] > 32 {
+		return // nothing but scalp
+	}
 	m := mirrored(p)
 	grain := a.marbling.at(p)
 	// Muscles of the neck, the temples and the face, with fat between them.
 	// Seams of fat part the bellies of the muscles.
 	seam := 9*math.Abs(a.warpX.at(p)) - 0.9
 	neck := min(outline-6-1.5*grain, -30-p[2]-0.4*p[1], seam)
-	temple := min(outline-4, ellipsoid(m, vec{68, 28, -8}, vec{13, 30, 36}))
-	cheek := min(outline-7, ellipsoid(m, vec{46, 34, -66}, vec{14, 24, 34}))
-	tongue := ellipsoid(p, vec{0, 54, -80}, vec{24, 30, 19})
+	temple := min(outline-4, blob(m, vec{68, 28, -8}, vec{13, 30, 36}))
+	cheek := min(outline-7, blob(m, vec{46, 34, -66}, vec{14, 24, 34}))
+	tongue := blob(p, vec{0, 54, -80}, vec{24, 30, 19})
 	c.paint(muscle, max(neck, temple, min(cheek, seam)))
 	c.paint(muscle, min(tongue, 2.2-grain))
-	c.paint(venousBlood, jugularPipe.at(m))
-	c.paint(arterialBlood, carotidNeckPipe.at(m))
+	c.paint(venousBlood, jugularPipe.near(m))
+	c.paint(arterialBlood, carotidNeckPipe.near(m))
 }
 
 // bones paints skull, jaws and spine.
@@ -104,37 +156,51 @@ func (a *anatomy) bones(p vec, c *canvas, cavity float64) {
 	if p[2] > 4 {
 		return
 	}
-	base := ellipsoid(p, vec{0, 14, -38}, vec{26, 24, 13})
+	base := blob(p, vec{0, 14, -38}, vec{26, 24, 13})
 	c.paint(bone, base)
 	c.paint(marrow, min(base-3, 9-math.Abs(p[1]-6)))
-	petrous := petrousPipe.at(m)
+	if p[2] < -50 && p[1] < 2 {
+		a.spine(p, c)
+	}
+	petrous := petrousPipe.near(m)
 	c.paint(bone, petrous)
-	spine := spinePipe.at(p)
+	if p[1] > -8 {
+		a.jaws(p, m, c)
+	}
+}
+
+// spine paints vertebrae, discs and arches.
+func (a *anatomy) spine(p vec, c *canvas) {
+	spine := spinePipe.near(p)
 	disc := math.Abs(math.Mod(p[2]+1000, 18)-9) - 7.2 // one disc in 18 mm
 	c.paint(bone, spine)
 	c.paint(marrow, min(spine-1.4, -disc))
 	c.paint(dura, min(spine-1, disc))
-	arch := archPipe.at(p)
+	arch := archPipe.near(p)
 	c.paint(bone, min(arch, 5-math.Abs(math.Mod(p[2]+1000, 18)-9)))
-	jaw := jawPipe.at(m)
+}
+
+// jaws paints the jaws with the teeth, the cheekbones and the forehead.
+func (a *anatomy) jaws(p, m vec, c *canvas) {
+	jaw := jawPipe.near(m)
 	c.paint(bone, jaw)
 	c.paint(marrow, jaw-2.4)
-	palate := min(ellipsoid(p, vec{0, 56, -62}, vec{27, 36, 4.5}), p[1]-24)
-	teeth := teethPipe.at(m)
+	palate := min(blob(p, vec{0, 56, -62}, vec{27, 36, 4.5}), p[1]-24)
+	teeth := teethPipe.near(m)
 	c.paint(bone, max(palate, teeth))
-	cheekbone := cheekbonePipe.at(m)
+	cheekbone := cheekbonePipe.near(m)
 	c.paint(bone, cheekbone)
 	c.paint(marrow, cheekbone-2.5)
-	c.paint(bone, ellipsoid(p, vec{0, 84, -14}, vec{30, 9, 12}))
+	c.paint(bone, blob(p, vec{0, 84, -14}, vec{30, 9, 12}))
 }
 
 // face paints the eyes and the airways.
 func (a *anatomy) face(p vec, c *canvas) {
 	m := mirrored(p)
-	orbit := ellipsoid(m, vec{30, 60, -20}, vec{19, 36, 18})
+	orbit := blob(m, vec{30, 60, -20}, vec{19, 36, 18})
 	c.paint(bone, orbit+1.6)
 	c.paint(fat, orbit)
-	if orbit < -14 {
+	if orbit <= -clearance {
 		a.airways(p, m, c)
 		return
 	}
@@ -143,10 +209,10 @@ func (a *anatomy) face(p vec, c *canvas) {
 		c.paint(muscle, tube(m, node{apex, 1.5}, node{at, 2.4}))
 	}
 	c.paint(whiteMatter, tube(m, node{vec{4, 14, -10}, 2.2}, node{apex, 2}, node{vec{32, 58, -20}, 2.2}))
-	globe := ellipsoid(m, vec{32, 70, -20}, vec{12, 12.2, 12})
+	globe := blob(m, vec{32, 70, -20}, vec{12, 12.2, 12})
 	c.paint(dura, globe)
-	c.paint(vitreous, globe-1.1)
-	c.paint(lens, ellipsoid(m, vec{32, 78, -20}, vec{4.6, 2.3, 4.6}))
+	c.within(vitreous, globe-1.1, dura)
+	c.paint(lens, blob(m, vec{32, 78, -20}, vec{4.6, 2.3, 4.6}))
 	a.airways(p, m, c)
 }
 
@@ -158,49 +224,55 @@ func (a *anatomy) airways(p, m vec, c *canvas) {
 		c.open(d - 0.9)
 	}
 	sinus := max(
-		ellipsoid(m, vec{13, 84, 2}, vec{12, 5.5, 11}),
-		ellipsoid(m, vec{27, 54, -46}, vec{13.5, 16, 14}),
-		ellipsoid(m, vec{8, 24, -30}, vec{9, 11, 9}))
+		blob(m, vec{13, 84, 2}, vec{12, 5.5, 11}),
+		blob(m, vec{27, 54, -46}, vec{13.5, 16, 14}),
+		blob(m, vec{8, 24, -30}, vec{9, 11, 9}))
 	if p[0] > -1 && p[0] < 1 {
 		sinus = min(sinus, math.Abs(p[0])-0.6) // septum
 	}
 	air(sinus)
-	cells := min(ellipsoid(m, vec{7, 56, -24}, vec{7, 20, 9}), 1.3-grain*1.4)
+	cells := min(blob(m, vec{7, 56, -24}, vec{7, 20, 9}), 1.3-grain*1.4)
 	air(cells)
-	air(min(ellipsoid(m, vec{57, -24, -36}, vec{11, 13, 15}), 0.9-grain*1.6))
-	nasal := min(ellipsoid(p, vec{0, 62, -44}, vec{11, 34, 15}), math.Abs(p[0])-1.1)
-	turbinate := max(turbinateLow.at(m), turbinateMid.at(m))
+	air(min(blob(m, vec{57, -24, -36}, vec{11, 13, 15}), 0.9-grain*1.6))
+	nasal := min(blob(p, vec{0, 62, -44}, vec{11, 34, 15}), math.Abs(p[0])-1.1)
+	turbinate := max(turbinateLow.near(m), turbinateMid.near(m))
 	air(nasal)
 	c.paint(mucosa, turbinate)
-	air(min(throatPipe.at(p)))
-	air(min(ellipsoid(p, vec{0, 62, -63}, vec{17, 22, 3.2})))
-	ear := earPipe.at(m)
+	air(min(throatPipe.near(p)))
+	air(min(blob(p, vec{0, 62, -63}, vec{17, 22, 3.2})))
+	ear := earPipe.near(m)
 	air(ear)
 }
 
 // brain paints everything within the dura.
 func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	m := mirrored(p)
-	a.vessels(p, c, cavity)
 	cerebrum := a.cerebrum(p, cavity)
 	if cerebrum > -c.edge {
 		a.hemispheres(p, c, cerebrum)
 	}
 	// Falx and tentorium.
-	falx := min(0.55-math.Abs(p[0]), cavity, -a.deep(p)-5)
-	if p[2] > -8 {
-		c.paint(dura, falx)
+	// The sinus lies in the root of the falx.
+	if ends := min(cavity-5, -a.deep.at(p)-5); p[2] > -8 && ends > -c.edge {
+		c.cover(dura, c.slab(math.Abs(p[0]), 0.55)*min(ends/c.edge+0.5, 1))
 	}
-	fossa := a.posteriorFossa(p)
+	fossa := a.fossa.at(p)
 	if cavity > 1 && p[1] < -14 && p[2] > -30 {
-		c.paint(dura, min(0.6-math.Abs(fossa+0.6), m[0]-7))
+		c.cover(dura, c.slab(math.Abs(fossa+0.6), 0.6)*min((m[0]-7)/c.edge+0.5, 1))
 	}
-	if cerebellum := min(a.cerebellum(p), fossa-2.2); cerebellum > -c.edge {
+	if cerebellum := min(a.cerebellum.at(p), fossa-1.6); cerebellum > -c.edge {
 		a.paintCerebellum(p, c, cerebellum)
 	}
-	stem := a.stem(p)
+	stem := a.stem.at(mirrored(p))
 	c.paint(brainStem, stem)
+	if p[2] < 4 && p[2] > -42 && p[1] < 0 {
+		c.paint(substantiaNigra, min(substantiaPipe.near(m), stem-1.2))
+		c.paint(redNucleus, min(blob(m, vec{5, -17.5, -5.5}, vec{3, 3, 4.2}), stem))
+		dentateShell := blob(m, vec{15, -58, -33}, vec{7, 9, 5.5})
+		c.paint(dentate, min(dentateShell, 1.8-dentateShell)) // a folded sheet, open inside
+	}
 	c.paint(csf, a.fourthVentricle(p))
+	a.vessels(p, c, cavity)
 	for _, l := range a.lesions {
 		l.paint(a, p, c)
 	}
@@ -210,58 +282,72 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 // lies deep in it.
 func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 	m := mirrored(p)
-	deep := a.deep(p)
+	deep := a.deep.at(p)
 	gap := a.fissure(p) // to the great fissures
 	crown := surface    // to the outer surface
 	sulcus := 40.0      // to the nearest sulcus
 	if surface < 32 && deep < 8 {
-		sulcus = sheet(a.fold, p, 40)
-		// A sulcus ends 20 mm below the surface and before the deep part.
-		if end := max(surface-20, deep+4); end > 0 {
+		sulcus = math.Abs(a.sulci.at(p))
+		deepest := sulcus
+		uneven := a.warpX.at(vec{p[1], p[2], p[0]})
+		// A sulcus ends about 8..24 mm below the surface and before the deep part.
+		if end := max(surface-14.5-4*uneven, deep+4); end > 0 {
 			sulcus = math.Hypot(sulcus, end)
 		}
+		if surface < 16 {
+			shallow := math.Abs(a.shallow.at(p))
+			// It keeps clear of the sulci that reach deep.
+			if end := max(surface-7-2*uneven, deep+4, 7.5-deepest); end > 0 {
+				shallow = math.Hypot(shallow, end)
+			}
+			sulcus = min(sulcus, shallow)
+		}
 	}
-	widen := 0.4 * max(0, 1-surface/6) // open toward the surface
-	pia := min(crown, sulcus-a.sulcusHalf-widen, gap-0.55)
-	if gap-0.55 < 0 || sulcus-a.sulcusHalf-widen < 0 {
-		c.paint(csf, surface)
+	widen := 0.4*max(0, 1-surface/6) + 0.5*a.atrophy // open toward the surface
+	pia := min(crown, sulcus-sulcusHalf-widen, gap-0.55)
+	// Sulci are thinner than most voxels: fluid fills of the brain what their
+	// sheets fill of the voxel.
+	inside := min(surface/c.edge+0.5, 1)
+	fluid := max(c.slab(sulcus, sulcusHalf+widen), c.slab(gap, 0.55))
+	if inside > 0 {
+		if fluid > 0 {
+			c.cover(csf, inside)
+		}
+		c.cover(cortex, inside*(1-fluid))
 	}
-	c.paint(cortex, min(pia, surface))
 	cortexThick := 2.7
 	white := pia - cortexThick
-	c.paint(whiteMatter, white)
+	c.within(whiteMatter, white, cortex)
 	if deep > -2 {
 		c.paint(whiteMatter, min(deep, gap-1.2))
 	}
-	c.paint(whiteMatter, min(a.callosum(p), surface))
+	c.paint(whiteMatter, min(a.callosum.at(m), surface))
 	// Deep grey matter, iron-rich parts last.
-	c.paint(caudate, caudatePipe.at(m))
-	c.paint(putamen, ellipsoid(m, vec{27, 6, 3}, vec{6, 19, 12}))
-	c.paint(pallidum, ellipsoid(m, vec{20.5, 3, 1.5}, vec{4.2, 11, 8.5}))
-	c.paint(thalamus, ellipsoid(m, vec{10.5, -14, 8}, vec{8.5, 15, 10}))
-	c.paint(cortex, hippocampusPipe.at(m)) // hippocampus
-	c.paint(csf, a.ventricles(p))
+	c.paint(caudate, caudatePipe.near(m))
+	c.paint(putamen, blob(m, vec{27, 6, 3}, vec{6, 19, 12}))
+	c.paint(pallidum, blob(m, vec{20.5, 3, 1.5}, vec{4.2, 11, 8.5}))
+	c.paint(thalamus, blob(m, vec{10.5, -14, 8}, vec{8.5, 15, 10}))
+	c.paint(cortex, hippocampusPipe.near(m)) // hippocampus
+	c.paint(csf, a.ventricles.at(m))
 	if p[2] > 14 || p[2] < -50 {
 		return
 	}
-	stem := a.stem(p)
+	stem := a.stem.at(mirrored(p))
 	// Cisterns about the midbrain and above the sella.
 	c.paint(csf, meet(min(4.5-math.Abs(stem+3.5), surface+6), -p[2], 8))
-	c.paint(csf, ellipsoid(p, vec{0, 6, -12}, vec{13, 12, 7}))
+	c.paint(csf, meet(blob(p, vec{0, 6, -11}, vec{12, 10, 6}), 9-math.Abs(p[0])-0.4*math.Abs(p[1]-6), 5))
 }
 
 // paintCerebellum paints its leaves.
 func (a *anatomy) paintCerebellum(p vec, c *canvas, surface float64) {
 	fissure := a.folia(p)
-	if surface > 11 {
-		fissure = math.Hypot(fissure, surface-11)
+	if surface > 14 {
+		fissure = math.Hypot(fissure, surface-14)
 	}
 	pia := min(surface, fissure-0.35)
 	c.paint(cortex, surface)
-	if pia < 0 {
-		c.paint(csf, min(surface, -pia))
-	}
-	c.paint(whiteMatter, pia-1.9)
+	c.cover(csf, c.slab(fissure, 0.35)*min(surface/c.edge+0.5, 1))
+	c.within(whiteMatter, pia-1.9, cortex)
 }
 
 // vessels paints the large ones within the skull.
@@ -273,8 +359,12 @@ func (a *anatomy) vessels(p vec, c *canvas, cavity float64) {
 	}
 	transverse := min(3.6-math.Abs(p[2]+16+0.02*m[0]), 5-cavity, cavity-0.4, -40-p[1])
 	c.paint(venousBlood, transverse)
-	c.paint(arterialBlood, basilarPipe.at(p))
-	c.paint(arterialBlood, carotidPipe.at(m))
+	for _, artery := range []float64{basilarPipe.near(p), carotidPipe.near(m)} {
+		if p[2] > -20 {
+			c.paint(csf, artery+1.6) // the cisterns that they run in
+		}
+		c.paint(arterialBlood, artery)
+	}
 }
 
 // tissue is an index into the list of tissue names.
@@ -296,23 +386,31 @@ const (
 	pallidum
 	thalamus
 	brainStem
+	redNucleus
+	substantiaNigra
+	dentate
 	vitreous
 	lens
 	venousBlood
 	arterialBlood
 	plaque
+	enhancingPlaque
 	infarctWhite
 	infarctGrey
+	massRim
 	massCore
 	necrosis
 	oedema
 	lacune
+	microBleed
+	meningioma
 	numTissues
 )
 
 // names of the tissues in the tissue table.
 var names = [numTissues]string{
 	"skin", "fat", "muscle", "cortical bone", "marrow", "mucosa", "dura", "CSF", "cortex", "white matter",
-	"caudate", "putamen", "pallidum", "thalamus", "brain stem", "vitreous humour", "lens",
-	"venous blood", "arterial blood", "plaque", "acute infarct, day 1", "acute infarct in cortex, day 1", "mass", "necrosis", "oedema", "lacune",
+	"caudate", "putamen", "pallidum", "thalamus", "brain stem", "red nucleus", "substantia nigra", "dentate nucleus", "vitreous humour", "lens",
+	"venous blood", "arterial blood", "plaque", "enhancing plaque", "acute infarct, day 1", "acute infarct in cortex, day 1", "mass rim", "mass", "necrosis", "oedema", "lacune",
+	"micro-bleed", "meningioma",
 }

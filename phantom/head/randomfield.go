@@ -82,18 +82,3 @@ func (f *randomField) at(p vec) float64 {
 	ab, cd := a+t[1]*(b-a), c+t[1]*(d-c)
 	return ab + t[2]*(cd-ab)
 }
-
-// sheet returns the distance in mm from p to the zero surface of g, to first
-// order, and at most limit.
-func sheet(g func(vec) float64, p vec, limit float64) float64 {
-	const h = 0.7
-	v := g(p)
-	var n float64
-	for a := range 3 {
-		q := p
-		q[a] += h
-		d := (g(q) - v) / h
-		n += d * d
-	}
-	return min(math.Abs(v)/math.Sqrt(n+1e-12), limit)
-}

@@ -23,6 +23,20 @@ func ellipsoid(p, c, r vec) float64 {
 	return k0 * (1 - k0) / k1
 }
 
+// clearance is how far outside a shape painting no longer needs to know the
+// distance, in mm.
+const clearance = 6
+
+// blob is an ellipsoid to be painted: -clearance far outside.
+func blob(p, c, r vec) float64 {
+	for a := range 3 {
+		if math.Abs(p[a]-c[a]) > r[a]+clearance {
+			return -clearance
+		}
+	}
+	return ellipsoid(p, c, r)
+}
+
 // node is a point of a tube with its radius there.
 type node struct {
 	at vec
@@ -53,6 +67,9 @@ func newPipe(nodes ...node) pipe {
 // at returns the signed distance of q; beyond reach of the box it is only known
 // to be below -reach.
 func (p pipe) at(q vec) float64 { return p.within(q, reach) }
+
+// near is at for painting: -clearance far outside.
+func (p pipe) near(q vec) float64 { return p.within(q, clearance) }
 
 // within is at with a reach of its own.
 func (p pipe) within(q vec, reach float64) float64 {

@@ -14,7 +14,9 @@ type objectFlags struct {
 	Phantom string   `group:"Object" help:"A built-in phantom: head."`
 	Voxel   string   `group:"Object" help:"Voxel of the phantom, such as '1 mm'." placeholder:"LENGTH"`
 	Shape   uint64   `group:"Object" help:"Seed of the phantom's shape." placeholder:"SEED"`
-	Finding []string `group:"Object" help:"Finding of the head: plaques, infarct, mass, lacune (repeat or separate by commas)." placeholder:"NAME"`
+	Finding []string `group:"Object" help:"Finding of the head: plaques, infarct, mass, lacune, micro-bleeds, meningioma, or one at a place, such as 'mass at 28 35 35 mm' (right, anterior, superior; repeat or separate by commas)." placeholder:"NAME"`
+
+	Atrophy float64 `group:"Object" help:"Age of the head, 0 (young) to 1: wider sulci and ventricles." placeholder:"0..1"`
 
 	Maps string `group:"Object" help:"Folder of maps with BIDS names, or one that 'phantom build' or 'maps build' wrote." placeholder:"FOLDER"`
 
@@ -48,7 +50,7 @@ type objectFlags struct {
 // object turns the flags into a request.
 func (f objectFlags) object() (task.Object, error) {
 	o := task.Object{
-		Phantom: f.Phantom, Seed: f.Shape, Findings: f.Finding, Folder: f.Maps, Unit: f.Unit, PDUnit: f.PDUnit,
+		Phantom: f.Phantom, Seed: f.Shape, Findings: f.Finding, Atrophy: f.Atrophy, Folder: f.Maps, Unit: f.Unit, PDUnit: f.PDUnit,
 		Labels: f.Labels, LabelList: f.LabelList, Full: f.FullScale, Remainder: f.Remainder, Tissues: f.Tissues,
 		Person: f.FromPerson, Synthetic: f.NoPerson, Defaced: f.Defaced, Unscaled: f.Unscaled, Resample: f.Resample, Fields: f.Fields,
 		Files: map[maps.Quantity]string{},

@@ -49,7 +49,9 @@ type phantomBuildCmd struct {
 	Voxel   string   `help:"Voxel, such as '1 mm'." default:"1 mm" placeholder:"LENGTH"`
 	Shape   uint64   `help:"Seed of the shape." placeholder:"SEED"`
 	Field   string   `help:"Field strength." default:"1.5 T" placeholder:"FIELD"`
-	Finding []string `help:"plaques, infarct, mass, lacune (repeat or separate by commas)." placeholder:"NAME"`
+	Finding []string `help:"plaques, infarct, mass, lacune, micro-bleeds, meningioma, or 'mass at 28 35 35 mm' (repeat or separate by commas)." placeholder:"NAME"`
+	Atrophy float64  `help:"Age of the head, 0 (young) to 1." placeholder:"0..1"`
+	Fields  []string `help:"Fields to model and write: b0, b1, coil (repeat or separate by commas)." placeholder:"NAME"`
 	Tissues string   `help:"File that extends the tissue table." placeholder:"FILE"`
 }
 
@@ -60,7 +62,7 @@ func (phantomBuildCmd) Help() string {
 }
 
 func (c phantomBuildCmd) Run(e *env) error {
-	o, err := objectFlags{Phantom: c.Name, Voxel: c.Voxel, Shape: c.Shape, Finding: c.Finding, Field: c.Field, Tissues: c.Tissues}.object()
+	o, err := objectFlags{Phantom: c.Name, Voxel: c.Voxel, Shape: c.Shape, Finding: c.Finding, Field: c.Field, Tissues: c.Tissues, Atrophy: c.Atrophy, Fields: c.Fields}.object()
 	if err != nil {
 		return err
 	}
@@ -80,7 +82,7 @@ func runSave(e *env, s task.Save) error {
 		fmt.Fprintf(&b, "Tissues: %s\n", clean(strings.Join(saved.Tissues, ", ")))
 	}
 	for _, f := range saved.Findings {
-		fmt.Fprintf(&b, "%-8s %8.2f ml at R %.1f A %.1f S %.1f mm\n", f.Name, f.Volume/1000, f.Centre[0], f.Centre[1], f.Centre[2])
+		fmt.Fprintf(&b, "%-13s %8.2f ml at R %.1f A %.1f S %.1f mm\n", f.Name, f.Volume/1000, f.Centre[0], f.Centre[1], f.Centre[2])
 	}
 	for _, n := range saved.Notes {
 		fmt.Fprintf(&b, "note: %s\n", clean(n))

@@ -30,6 +30,7 @@ type Object struct {
 	Seed     uint64
 	Voxel    float64 // mm; 0 = 1 mm
 	Findings []string
+	Atrophy  float64 // 0..1
 
 	Folder string // written by phantom build or maps build, or with BIDS names
 	Files  map[maps.Quantity]string
@@ -64,6 +65,7 @@ type Loaded struct {
 	Inputs    []string // files that were read
 	Canonical string   // what it is, for identities
 
+	labels func() *maps.Volume      // of the findings; nil = none
 	flows  bool                     // blood moves
 	planes map[maps.Plane]*maps.Set // with the speed of blood through their slices
 }
@@ -96,7 +98,7 @@ func (o Object) Load(ctx context.Context, p Progress) (*Loaded, error) {
 	case len(o.Files) > 0:
 		err = l.files(o, o.Files, nil)
 	case o.Labels != "":
-		err = l.labels(o)
+		err = l.segmentation(o)
 	default:
 		err = l.probabilities(ctx, o, o.Probabilities, o.Full, o.Remainder)
 	}
@@ -155,12 +157,12 @@ func (l *Loaded) phantom(ctx context.Context, o Object, p Progress) error {
 	if known := Phantoms(); !slices.Contains(known, o.Phantom) {
 		return usagef("unknown phantom %q: want %s%s", o.Phantom, strings.Join(known, ", "), maps.DidYouMean(o.Phantom, known))
 	}
-	h, err := head.Build(ctx, head.Spec{Seed: o.Seed, Voxel: [3]float64{o.Voxel, o.Voxel, o.Voxel}, Field: o.Field, Findings: o.Findings}, l.Table, p.step("building the head"))
+	h, err := head.Build(ctx, head.Spec{Seed: o.Seed, Voxel: [3]float64{o.Voxel, o.Voxel, o.Voxel}, Field: o.Field, Findings: o.Findings, Atrophy: o.Atrophy}, l.Table, p.step("building the head"))
 	if err != nil {
 		return err
 	}
-	l.Set, l.Findings = h.Set, h.Findings
-	l.Canonical += fmt.Sprintf("phantom %s seed %d grid %v %v findings %q\n", o.Phantom, o.Seed, h.Set.Grid.Size, h.Set.Grid.Spacing, o.Findings)
+	l.Set, l.Findings, l.labels = h.Set, h.Findings, h.Labels
+	l.Canonical += fmt.Sprintf("phantom %s seed %d grid %v %v findings %q atrophy %g\n", o.Phantom, o.Seed, h.Set.Grid.Size, h.Set.Grid.Spacing, o.Findings, o.Atrophy)
 	return nil
 }
 
@@ -416,7 +418,7 @@ func sum(b []byte) []byte {
 	return h[:]
 }
 
-func (l *Loaded) labels(o Object) error {
+func (l *Loaded) segmentation(o Object) error {
 	if o.LabelList == "" {
 		return usagef("a segmentation needs its label list: want a file with columns index and name")
 	}

@@ -180,6 +180,19 @@ func saveMixture(ctx context.Context, f *export.Folder, l *Loaded, progress func
 			return err
 		}
 	}
+	for _, q := range l.Set.Has() { // fields
+		if err := saveMap(f, q, l.Set.Volume(q), l.Set); err != nil {
+			return err
+		}
+	}
+	if len(l.Findings) > 0 && l.labels != nil {
+		err := f.Write("findings.nii.gz", func(w io.Writer) error {
+			return nifti.Write(w, l.labels(), nifti.Options{Type: nifti.Uint8, Gzip: true, Descrip: "findings: n-th row of findings.tsv"})
+		})
+		if err != nil {
+			return err
+		}
+	}
 	return saveDominant(f, l)
 }
 
@@ -244,9 +257,9 @@ func findingsTSV(l *Loaded) []byte {
 		return nil
 	}
 	var b bytes.Buffer
-	b.WriteString("name\ttissues\tvolume_mm3\tx_mm_R\ty_mm_A\tz_mm_S\n")
-	for _, f := range l.Findings {
-		fmt.Fprintf(&b, "%s\t%s\t%.1f\t%.2f\t%.2f\t%.2f\n", f.Name, strings.Join(f.Tissues, ", "), math.Round(f.Volume*10)/10, f.Centre[0], f.Centre[1], f.Centre[2])
+	b.WriteString("label\tname\ttissues\tvolume_mm3\tx_mm_R\ty_mm_A\tz_mm_S\n")
+	for i, f := range l.Findings {
+		fmt.Fprintf(&b, "%d\t%s\t%s\t%.1f\t%.2f\t%.2f\t%.2f\n", i+1, f.Name, strings.Join(f.Tissues, ", "), math.Round(f.Volume*10)/10, f.Centre[0], f.Centre[1], f.Centre[2])
 	}
 	return b.Bytes()
 }
