@@ -25,7 +25,7 @@ var suffixes = map[string]struct {
 	"T1map": {maps.T1, false}, "T2map": {maps.T2, false}, "T2starmap": {maps.T2Star, false},
 	"R1map": {maps.T1, true}, "R2map": {maps.T2, true}, "R2starmap": {maps.T2Star, true},
 	"PDmap": {maps.PD, false}, "FFmap": {maps.FatFraction, false}, "ADCmap": {maps.ADC, false},
-	"fieldmap": {maps.B0, false}, "TB1map": {maps.B1, false},
+	"fieldmap": {maps.B0, false}, "TB1map": {maps.B1, false}, "RB1map": {maps.Coil, false},
 }
 
 // Name is a file name taken apart.

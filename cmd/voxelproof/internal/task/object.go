@@ -410,6 +410,40 @@ func (l *Loaded) mixture(ctx context.Context, o Object, list []byte) error {
 		l.Set.Mixture.Texture = img.Volume
 	}
 	l.Set.Origin = maps.Origin{Source: source, Person: person, BodyPart: "HEAD"}
+	return l.savedFields(o)
+}
+
+// savedFields reads the fields that were saved beside a mixture.
+func (l *Loaded) savedFields(o Object) error {
+	var list []bids.Map
+	for _, q := range []maps.Quantity{maps.B0, maps.B1, maps.Coil} {
+		file := filepath.Join(o.Folder, mapStem(q)+".nii.gz")
+		if _, err := os.Stat(file); errors.Is(err, fs.ErrNotExist) {
+			continue
+		}
+		img, err := l.nifti(file, o, nifti.Read)
+		if err != nil {
+			return err
+		}
+		side, err := sidecar(file)
+		if err != nil {
+			return err
+		}
+		list = append(list, bids.Map{From: file, Quantity: q, Unit: side.Units, Volume: img.Volume})
+	}
+	if len(list) == 0 {
+		return nil
+	}
+	set, notes, err := bids.Assemble(list, o.Resample)
+	if err != nil {
+		return err
+	}
+	l.Notes = append(l.Notes, notes...)
+	for _, q := range set.Has() {
+		if err := l.Set.Add(q, set.Volume(q)); err != nil {
+			return fmt.Errorf("%s: %w", o.Folder, err)
+		}
+	}
 	return nil
 }
 

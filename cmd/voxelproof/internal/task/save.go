@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"slices"
 	"strings"
 
 	"voxelproof/export"
@@ -47,6 +48,9 @@ type FindingRow struct {
 func (s Save) Run(ctx context.Context, p Progress) (*Saved, error) {
 	if s.Out == "" {
 		return nil, usagef("no output folder: want --out FOLDER")
+	}
+	if slices.Contains(s.Object.Fields, "flow") {
+		return nil, usagef("field flow: speed through a slice depends on the slice: want it with synth, not in a folder of maps")
 	}
 	l, err := s.Object.Load(ctx, p)
 	if err != nil {
@@ -102,9 +106,12 @@ func save(ctx context.Context, f *export.Folder, l *Loaded, p Progress) error {
 	return saveMixture(ctx, f, l, p.step("writing maps"))
 }
 
+// mapStem is the name of a map's files without extension.
+func mapStem(q maps.Quantity) string { return "sub-synthetic_" + bids.Suffix(q) }
+
 // saveMap writes one map with its sidecar.
 func saveMap(f *export.Folder, q maps.Quantity, v *maps.Volume, set *maps.Set) error {
-	stem := "sub-synthetic_" + bids.Suffix(q)
+	stem := mapStem(q)
 	err := f.Write(stem+".nii.gz", func(w io.Writer) error {
 		return nifti.Write(w, v, nifti.Options{Gzip: true, Descrip: "voxelproof " + q.String()})
 	})
