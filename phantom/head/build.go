@@ -92,6 +92,7 @@ func Build(ctx context.Context, spec Spec, table *phantom.Table, progress func(d
 	if err := eg.Wait(); err != nil {
 		return nil, err
 	}
+	an.shade(m.Texture)
 	lesions, requests, err := newLesions(spec.Findings, spec.Seed, an)
 	if err != nil {
 		return nil, fmt.Errorf("head: %w", err)
@@ -223,6 +224,19 @@ func texture(seed uint64) *maps.Volume {
 		v.Data[n] = float32(f.at(v.Grid.World(maps.Vec{float64(ijk[0]), float64(ijk[1]), float64(ijk[2])})))
 	}
 	return v
+}
+
+// shade adds to the texture what makes white matter look more like grey toward
+// the cortex: longer relaxation in the outer 15 mm of the brain.
+func (a *anatomy) shade(texture *maps.Volume) {
+	for n := range texture.Data {
+		ijk := texture.Grid.IJK(n)
+		w := texture.Grid.World(maps.Vec{float64(ijk[0]), float64(ijk[1]), float64(ijk[2])})
+		depth := a.cavity.at(vec{w[0] / a.scale[0], w[1] / a.scale[1], w[2] / a.scale[2]})
+		if depth > 0 {
+			texture.Data[n] += float32(0.9 * math.Exp(-depth*depth/144))
+		}
+	}
 }
 
 // truth measures the findings as they were painted.

@@ -228,3 +228,25 @@ func TestAtrophy(t *testing.T) {
 		t.Errorf("fluid %.2f times that of the young head: want 1.1..1.8", q)
 	}
 }
+
+// White matter is a little darker on T1 weighting toward the cortex: its
+// texture, and with it T1, is higher there.
+func TestShade(t *testing.T) {
+	x := build(t, Spec{Voxel: cube(4)}).Set.Mixture.Texture
+	plain := texture(0)
+	var outer, middle, n, k float64
+	for i := range x.Data {
+		ijk := x.Grid.IJK(i)
+		w := x.Grid.World(maps.Vec{float64(ijk[0]), float64(ijk[1]), float64(ijk[2])})
+		d := float64(x.Data[i] - plain.Data[i])
+		switch r := length(sub(w, vec{0, -8, 14})); {
+		case r > 58 && r < 64:
+			outer, n = outer+d, n+1
+		case r < 25:
+			middle, k = middle+d, k+1
+		}
+	}
+	if outer/n < 0.25 || middle/k > 0.05 {
+		t.Errorf("texture rises by %.2f near the surface and %.2f in the middle: want at least 0.25 and at most 0.05", outer/n, middle/k)
+	}
+}

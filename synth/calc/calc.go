@@ -21,7 +21,7 @@ type Row struct {
 	Sign   int     `json:"sign"`        // -1 before a null, 1 after it, 0 at it
 	Rank   int     `json:"rank"`        // 1 = brightest
 	Null   float64 `json:"nullTI,omitempty"`
-	Ernst  float64 `json:"ernstAngle,omitempty"` // rad, of gradient echoes
+	Flip   float64 `json:"bestFlip,omitempty"` // rad, of the largest signal of gradient echoes (Ernst angle) and balanced SSFP
 }
 
 // Pair is the contrast of two tissues.
@@ -58,7 +58,10 @@ func Tissues(field float64, s synth.Scan, tissues []maps.Tissue) (*Table, error)
 			row.Null, _ = NullTI(field, s, tissue)
 		}
 		if s.Sequence == synth.SpoiledGRE {
-			row.Ernst = signal.ErnstAngle(main(tissue), s.Timing)
+			row.Flip = signal.ErnstAngle(main(tissue), s.Timing)
+		}
+		if s.Sequence == synth.BalancedSSFP {
+			row.Flip = signal.BestAngleSSFP(main(tissue), s.Timing)
 		}
 		t.Rows = append(t.Rows, row)
 	}

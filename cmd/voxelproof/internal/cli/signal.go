@@ -57,8 +57,8 @@ func writeTable(b *strings.Builder, t *calc.Table) {
 			if r.Null > 0 {
 				extra += fmt.Sprintf("null at TI %.0f ms (efficiency %g) ", r.Null*1e3, t.Efficiency)
 			}
-			if r.Ernst > 0 {
-				extra += fmt.Sprintf("Ernst angle %.1f deg", r.Ernst*180/math.Pi)
+			if r.Flip > 0 {
+				extra += fmt.Sprintf("largest signal at flip %.1f deg", r.Flip*180/math.Pi)
 			}
 			fmt.Fprintf(b, "  %-34s %9.4f %9.4f  %s\n", clean(r.Tissue), r.Signal, r.PerPD, extra)
 		}
