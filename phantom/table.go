@@ -85,20 +85,30 @@ const maxTable = 1 << 20
 // of the built-in table added; a number given again replaces that of t. Errors
 // name the line.
 func (t *Table) Extend(r io.Reader, file string) (*Table, error) {
+	p := t.extension()
+	if err := eachLine(r, file, p.line); err != nil {
+		return nil, err
+	}
+	return p.done(file)
+}
+
+// extension returns a parser that adds to a copy of t.
+func (t *Table) extension() *tableParser {
 	out := &Table{names: slices.Clone(t.names), entries: map[string][]Value{}}
 	for n, vs := range t.entries {
 		out.entries[n] = slices.Clone(vs)
 	}
-	p := tableParser{table: out, sources: map[string]string{}, given: map[numberKey]int{}}
-	if err := eachLine(r, file, p.line); err != nil {
-		return nil, err
-	}
+	return &tableParser{table: out, sources: map[string]string{}, given: map[numberKey]int{}}
+}
+
+// done returns the table when its numbers fit together.
+func (p *tableParser) done(file string) (*Table, error) {
 	for _, name := range p.touched {
-		if err := out.validate(name); err != nil {
+		if err := p.table.validate(name); err != nil {
 			return nil, fmt.Errorf("%s: %w", file, err)
 		}
 	}
-	return out, nil
+	return p.table, nil
 }
 
 // eachLine calls f for every line of a text that is neither empty nor a comment,
@@ -294,14 +304,13 @@ func (t *Table) Tissue(name string, field float64) (maps.Tissue, error) {
 		return maps.Tissue{}, t.absent(name, "PD", field)
 	}
 	out.PD = pd.Value
-	out.Spread.PD = pd.Spread / pd.Value
 	spread := func(q string) float64 {
 		if v, ok := t.find(name, q, field); ok && v.Value > 0 {
 			return v.Spread / v.Value
 		}
 		return 0
 	}
-	out.Spread.T1, out.Spread.T2 = spread("T1"), spread("T2")
+	out.Spread = maps.Variation{T1: spread("T1"), T2: spread("T2"), PD: spread("PD")}
 	value := func(q string) float64 { v, _ := t.find(name, q, field); return v.Value }
 	out.ADC, out.Uptake, out.FatFraction, out.Chi = value("ADC"), value("uptake"), value("fat"), value("chi")
 	if out.FatFraction > 0 {

@@ -11,7 +11,7 @@ import (
 
 // objectFlags say what is imaged.
 type objectFlags struct {
-	Phantom string   `group:"Object" help:"A built-in phantom: head."`
+	Phantom string   `group:"Object" help:"A built-in phantom (see 'phantom list'), or a file that describes a scene of shapes."`
 	Voxel   string   `group:"Object" help:"Voxel of the phantom, such as '1 mm'." placeholder:"LENGTH"`
 	Shape   uint64   `group:"Object" help:"Seed of the phantom's shape." placeholder:"SEED"`
 	Finding []string `group:"Object" help:"Finding of the head: plaques, infarct, mass, lacune, micro-bleeds, meningioma, or one at a place, such as 'mass at 28 35 35 mm' (right, anterior, superior; repeat or separate by commas)." placeholder:"NAME"`

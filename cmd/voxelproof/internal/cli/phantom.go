@@ -43,7 +43,7 @@ func (c phantomListCmd) Run(e *env) error {
 }
 
 type phantomBuildCmd struct {
-	Name    string   `arg:"" help:"The phantom: head."`
+	Name    string   `arg:"" help:"The phantom: head, quality, vials, or a file that describes a scene of shapes."`
 	Out     string   `help:"Folder to write." placeholder:"FOLDER"`
 	Replace bool     `help:"Replace a folder that this program wrote."`
 	Voxel   string   `help:"Voxel, such as '1 mm'." default:"1 mm" placeholder:"LENGTH"`

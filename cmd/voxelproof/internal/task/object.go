@@ -26,7 +26,7 @@ import (
 // Object says what is imaged: exactly one of a phantom, a folder, map files, a
 // segmentation, or probability images.
 type Object struct {
-	Phantom  string // "head"
+	Phantom  string // name from Phantoms, or a file that describes a scene
 	Seed     uint64
 	Voxel    float64 // mm; 0 = 1 mm
 	Findings []string
@@ -154,8 +154,8 @@ func (l *Loaded) read(file string, h hash.Hash) {
 }
 
 func (l *Loaded) phantom(ctx context.Context, o Object, p Progress) error {
-	if known := Phantoms(); !slices.Contains(known, o.Phantom) {
-		return usagef("unknown phantom %q: want %s%s", o.Phantom, strings.Join(known, ", "), maps.DidYouMean(o.Phantom, known))
+	if o.Phantom != "head" {
+		return l.scene(ctx, o, p)
 	}
 	h, err := head.Build(ctx, head.Spec{Seed: o.Seed, Voxel: [3]float64{o.Voxel, o.Voxel, o.Voxel}, Field: o.Field, Findings: o.Findings, Atrophy: o.Atrophy}, l.Table, p.step("building the head"))
 	if err != nil {
@@ -166,8 +166,38 @@ func (l *Loaded) phantom(ctx context.Context, o Object, p Progress) error {
 	return nil
 }
 
+// scene builds a phantom made of shapes: a built-in one, or one described in a
+// file.
+func (l *Loaded) scene(ctx context.Context, o Object, p Progress) error {
+	if len(o.Findings) > 0 || o.Seed != 0 || o.Atrophy != 0 {
+		return usagef("phantom %s: findings, seed and atrophy belong to the head", o.Phantom)
+	}
+	var s *phantom.Scene
+	data, err := readSmall(o.Phantom)
+	switch {
+	case slices.Contains(phantom.Scenes(), o.Phantom):
+		s, err = phantom.LoadScene(o.Phantom)
+	case err == nil:
+		l.Inputs = append(l.Inputs, o.Phantom)
+		l.Canonical += "scene " + hex.EncodeToString(sum(data)) + "\n"
+		s, err = phantom.ParseScene(bytes.NewReader(data), o.Phantom, l.Table)
+	case errors.Is(err, fs.ErrNotExist) && !strings.ContainsAny(o.Phantom, "./\\"):
+		return usagef("unknown phantom %q: want %s, or a file%s", o.Phantom, strings.Join(Phantoms(), ", "), maps.DidYouMean(o.Phantom, Phantoms()))
+	}
+	if err != nil {
+		return err
+	}
+	spec := phantom.SceneSpec{Voxel: [3]float64{o.Voxel, o.Voxel, o.Voxel}, Field: o.Field}
+	if l.Set, err = s.Build(ctx, spec, p.step("building "+o.Phantom)); err != nil {
+		return err
+	}
+	l.Table = s.Table
+	l.Canonical += fmt.Sprintf("phantom %s grid %v %v\n", filepath.Base(o.Phantom), l.Set.Grid.Size, l.Set.Grid.Spacing)
+	return nil
+}
+
 // Phantoms lists the built-in phantoms.
-func Phantoms() []string { return []string{"head"} }
+func Phantoms() []string { return append([]string{"head"}, phantom.Scenes()...) }
 
 // nifti reads one image file and notes it.
 func (l *Loaded) nifti(file string, o Object, read func(io.Reader, nifti.Reading) (*nifti.Image, error)) (*nifti.Image, error) {
