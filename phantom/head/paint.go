@@ -359,7 +359,7 @@ func (a *anatomy) vessels(p vec, c *canvas, cavity float64) {
 	}
 	transverse := min(3.6-math.Abs(p[2]+16+0.02*m[0]), 5-cavity, cavity-0.4, -40-p[1])
 	c.paint(venousBlood, transverse)
-	for _, artery := range []float64{basilarPipe.near(p), carotidPipe.near(m)} {
+	for _, artery := range []float64{basilarPipe.near(p), carotidPipe.near(m), anteriorPipe.near(m)} {
 		if p[2] > -20 {
 			c.paint(csf, artery+1.6) // the cisterns that they run in
 		}

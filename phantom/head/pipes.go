@@ -26,5 +26,6 @@ var (
 	hippocampusPipe = newPipe(node{vec{25, -4, -18}, 5}, node{vec{27, -22, -10}, 4.2}, node{vec{24, -32, -2}, 3})
 	substantiaPipe  = newPipe(node{vec{3.5, -9.5, -8.5}, 1.5}, node{vec{8, -13, -8}, 1.9}, node{vec{11, -18, -7}, 1.4})
 	basilarPipe     = newPipe(node{vec{0, -2.2, -16}, 1.8}, node{vec{0, -3, -36}, 1.9})
+	anteriorPipe    = newPipe(node{vec{11, 12, -12}, 1.6}, node{vec{2.6, 17, -9}, 1.3}, node{vec{2.4, 34, 0}, 1.2}, node{vec{2.4, 46, 14}, 1.1}, node{vec{2.4, 38, 31}, 1})
 	carotidPipe     = newPipe(node{vec{12, 20, -28}, 2.5}, node{vec{11, 12, -12}, 2.3}, node{vec{22, 8, -9}, 1.6}, node{vec{38, 4, -6}, 1.3})
 )

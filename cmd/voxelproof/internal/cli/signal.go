@@ -15,6 +15,7 @@ type signalCmd struct {
 	Tissue   []string `help:"Tissue of the table, or 'T1=900ms T2=80ms PD=0.7' (repeat)." sep:"none" placeholder:"TISSUE"`
 	Tissues  string   `help:"File that extends the tissue table." placeholder:"FILE"`
 	CSV      string   `name:"csv" help:"CSV file of tissues with columns T1, T2, T2*, PD, ADC, name; - = stdin. Prints CSV." placeholder:"FILE"`
+	Table    string   `help:"text or csv." enum:"text,csv" default:"text"`
 	Skip     bool     `help:"Leave bad rows of the CSV file out (exit code 3) instead of stopping."`
 }
 
@@ -38,6 +39,12 @@ func (c signalCmd) Run(e *env) error {
 		return err
 	}
 	var b strings.Builder
+	if c.Table == "csv" {
+		if err := calc.WriteCSV(&b, tables); err != nil {
+			return err
+		}
+		return e.print(tables, b.String())
+	}
 	for _, t := range tables {
 		writeTable(&b, t)
 	}
