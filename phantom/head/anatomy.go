@@ -36,9 +36,11 @@ func proportions(seed uint64, atrophy float64) *anatomy {
 	}
 }
 
-// newAnatomy makes the head of a seed, without findings.
-func newAnatomy(ctx context.Context, seed uint64, atrophy float64) (*anatomy, error) {
+// newAnatomy makes the head of a seed, without findings, for voxels of an edge
+// in mm: what is sampled once is sampled no finer than they need.
+func newAnatomy(ctx context.Context, seed uint64, atrophy, edge float64) (*anatomy, error) {
 	a := proportions(seed, atrophy)
+	coarse := max(1, edge/1.5)
 	fields := []struct {
 		dst          **randomField
 		stream       uint64
@@ -57,14 +59,14 @@ func newAnatomy(ctx context.Context, seed uint64, atrophy float64) (*anatomy, er
 	for d := range 3 {
 		lo[d], hi[d] = 1.05*low[d], 1.05*high[d]
 	}
-	a.cavity, a.outline = newLattice(lo, hi, 3), newLattice(lo, hi, 3)
-	a.fossa, a.cerebellum = newLattice(vec{-66, -102, -74}, vec{66, 10, 8}, 2.5), newLattice(vec{-66, -102, -74}, vec{66, 10, 8}, 2.5)
-	a.deep = newLattice(vec{-52, -62, -30}, vec{52, 62, 52}, 2.5)
-	a.ventricles = newLattice(vec{0, -90, -40}, vec{54, 62, 52}, 1.5)
-	a.stem = newLattice(vec{0, -62, -130}, vec{32, 12, 14}, 1.5)
-	a.callosum = newLattice(vec{0, -58, -12}, vec{40, 58, 50}, 1.5)
-	a.sulci = newLattice(vec{-76, -104, -50}, vec{76, 86, 86}, 1.75)
-	a.shallow = newLattice(a.sulci.lo, vec{76, 86, 86}, 1.75)
+	a.cavity, a.outline = newLattice(lo, hi, 3*coarse), newLattice(lo, hi, 3*coarse)
+	a.fossa, a.cerebellum = newLattice(vec{-66, -102, -74}, vec{66, 10, 8}, 2.5*coarse), newLattice(vec{-66, -102, -74}, vec{66, 10, 8}, 2.5*coarse)
+	a.deep = newLattice(vec{-52, -62, -30}, vec{52, 62, 52}, 2.5*coarse)
+	a.ventricles = newLattice(vec{0, -90, -40}, vec{54, 62, 52}, 1.5*coarse)
+	a.stem = newLattice(vec{0, -62, -130}, vec{32, 12, 14}, 1.5*coarse)
+	a.callosum = newLattice(vec{0, -58, -12}, vec{40, 58, 50}, 1.5*coarse)
+	a.sulci = newLattice(vec{-76, -104, -50}, vec{76, 86, 86}, 1.75*coarse)
+	a.shallow = newLattice(a.sulci.lo, vec{76, 86, 86}, 1.75*coarse)
 	for _, l := range []struct {
 		l *lattice
 		f func(vec) float64

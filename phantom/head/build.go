@@ -88,7 +88,10 @@ func Build(ctx context.Context, spec Spec, table *phantom.Table, progress func(d
 	var an *anatomy
 	eg, inner := errgroup.WithContext(ctx)
 	eg.Go(func() error { m.Texture = texture(spec.Seed); return nil })
-	eg.Go(func() (err error) { an, err = newAnatomy(inner, spec.Seed, spec.Atrophy); return err })
+	eg.Go(func() (err error) {
+		an, err = newAnatomy(inner, spec.Seed, spec.Atrophy, slices.Min(spec.Voxel[:]))
+		return err
+	})
 	if err := eg.Wait(); err != nil {
 		return nil, err
 	}

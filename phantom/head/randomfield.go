@@ -25,9 +25,14 @@ func newRandomField(seed uint64, stream uint64, lo, hi, step float64) *randomFie
 	r := rand.New(rand.NewPCG(seed, stream))
 	f := &randomField{step: step, v: make([]float32, fieldSize*fieldSize*fieldSize)}
 	period := step * fieldSize
-	amplitude := math.Sqrt(2.0 / fieldWaves)
-	for n := 0; n < fieldWaves; {
-		var k [3]float64
+	type wave struct {
+		k    [3]int // turns per period
+		base complex128
+	}
+	var waves []wave
+	top := 0
+	for len(waves) < fieldWaves {
+		var k vec
 		for a := range k {
 			k[a] = math.Round((2*r.Float64() - 1) * period / lo)
 		}
@@ -35,27 +40,53 @@ func newRandomField(seed uint64, stream uint64, lo, hi, step float64) *randomFie
 		if norm == 0 || period/norm < lo || period/norm > hi {
 			continue
 		}
-		phase := 2 * math.Pi * r.Float64()
-		n++
-		// The wave is a product of one-dimensional phasors.
-		var ph [3][fieldSize]complex128
-		for a := range k {
-			for i := range fieldSize {
-				s, c := math.Sincos(2 * math.Pi * k[a] * float64(i) / fieldSize)
-				ph[a][i] = complex(c, s)
-			}
+		s, c := math.Sincos(2 * math.Pi * r.Float64())
+		amplitude := math.Sqrt(2.0 / fieldWaves)
+		w := wave{[3]int{int(k[0]), int(k[1]), int(k[2])}, complex(amplitude*c, amplitude*s)}
+		waves = append(waves, w)
+		top = max(top, w.k[0], -w.k[0])
+	}
+	var root [fieldSize]complex128
+	for i := range root {
+		s, c := math.Sincos(2 * math.Pi * float64(i) / fieldSize)
+		root[i] = complex(c, s)
+	}
+	turn := func(k, i int) complex128 { return root[((k*i)%fieldSize+fieldSize)%fieldSize] }
+	cos, sin := make([][fieldSize]float64, top+1), make([][fieldSize]float64, top+1)
+	for k := range cos {
+		for i := range fieldSize {
+			cos[k][i], sin[k][i] = real(turn(k, i)), imag(turn(k, i))
 		}
-		s, c := math.Sincos(phase)
-		base := complex(amplitude*c, amplitude*s)
-		i := 0
-		for z := range fieldSize {
-			for y := range fieldSize {
-				zy := base * ph[2][z] * ph[1][y]
-				for x := range fieldSize {
-					f.v[i] += float32(real(zy)*real(ph[0][x]) - imag(zy)*imag(ph[0][x]))
-					i++
+	}
+	// Along a row waves of one frequency are one wave: few are left to add up.
+	even, odd := make([]float64, top+1), make([]float64, top+1)
+	var row [fieldSize]float64
+	n := 0
+	for z := range fieldSize {
+		for y := range fieldSize {
+			clear(even)
+			clear(odd)
+			for _, w := range waves {
+				at := w.base * turn(w.k[2], z) * turn(w.k[1], y)
+				if k := w.k[0]; k >= 0 {
+					even[k] += real(at)
+					odd[k] -= imag(at)
+				} else {
+					even[-k] += real(at)
+					odd[-k] += imag(at)
 				}
 			}
+			clear(row[:])
+			for k := range even {
+				e, o := even[k], odd[k]
+				for x := range row {
+					row[x] += float64(e*cos[k][x]) + float64(o*sin[k][x])
+				}
+			}
+			for x, v := range row {
+				f.v[n+x] = float32(v)
+			}
+			n += fieldSize
 		}
 	}
 	return f
