@@ -133,7 +133,7 @@ func (a *anatomy) soft(p vec, c *canvas, outline, cavity float64) {
 	// Muscles of the neck, the temples and the face, with fat between them.
 	// Seams of fat part the bellies of the muscles.
 	seam := 9*math.Abs(a.warpX.at(p)) - 0.9
-	neck := min(outline-6-1.5*grain, -30-p[2]-0.4*p[1], seam)
+	neck := min(outline-6-0.5*grain, -30-p[2]-0.4*p[1], seam)
 	temple := min(outline-4, blob(m, vec{68, 28, -8}, vec{13, 30, 36}))
 	cheek := min(outline-7, blob(m, vec{46, 34, -66}, vec{14, 24, 34}))
 	tongue := blob(p, vec{0, 54, -80}, vec{24, 30, 19})
@@ -360,8 +360,8 @@ func (a *anatomy) vessels(p vec, c *canvas, cavity float64) {
 	transverse := min(3.6-math.Abs(p[2]+16+0.02*m[0]), 5-cavity, cavity-0.4, -40-p[1])
 	c.paint(venousBlood, transverse)
 	for _, artery := range []float64{basilarPipe.near(p), carotidPipe.near(m), anteriorPipe.near(m)} {
-		if p[2] > -20 {
-			c.paint(csf, artery+1.6) // the cisterns that they run in
+		if p[2] > -20 && p[2] < -3 {
+			c.paint(csf, artery+1.4) // the cisterns that they run in
 		}
 		c.paint(arterialBlood, artery)
 	}
