@@ -135,9 +135,9 @@ func (a *anatomy) canal(p vec) float64 {
 }
 
 // cerebrum is the outer surface of the hemispheres, sulci not cut.
-func (a *anatomy) cerebrum(p vec, cavity float64) float64 {
+func (a *anatomy) cerebrum(p vec, cavity, fossa float64) float64 {
 	// Fluid over the hemispheres is thicker above than at the base.
-	return min(cavity-1.2-0.8*min(max((p[2]+5)/25, 0), 1), -a.fossa.at(p)-1.2)
+	return min(cavity-1.2-0.8*min(max((p[2]+5)/25, 0), 1), -fossa-1.2)
 }
 
 // stemShape is midbrain, pons, medulla and cord.
@@ -204,14 +204,14 @@ func (a *anatomy) fissure(p vec) float64 {
 	// Between the hemispheres, above and around the callosum.
 	d := math.Abs(p[0])
 	if in := a.deep.at(vec{0, p[1], p[2]}); in > 0 {
-		d = math.Hypot(d, in)
+		d = hypot(d, in)
 	}
 	// The Sylvian fissure: a sheet inward to the insula, and the sheet over it.
 	y, z := m[1], m[2]
 	slope := -1 + 0.42*(6-y) + 2.5*a.warpX.at(p)
 	outward := max(40-m[0], 0, y-26, -26-y)
-	inlet := math.Hypot(z-slope, outward)
-	insula := math.Hypot(m[0]-39+0.012*(y-2)*(y-2)-0.02*(z-0.4*slope)*(z-0.4*slope)-1.5*a.warpY.at(p), max(math.Abs(z-0.4*slope)-11, 0, y-22, -16-y))
+	inlet := hypot(z-slope, outward)
+	insula := hypot(m[0]-39+0.012*(y-2)*(y-2)-0.02*(z-0.4*slope)*(z-0.4*slope)-1.5*a.warpY.at(p), max(math.Abs(z-0.4*slope)-11, 0, y-22, -16-y))
 	return min(d, inlet, insula)
 }
 

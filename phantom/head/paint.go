@@ -247,7 +247,11 @@ func (a *anatomy) airways(p, m vec, c *canvas) {
 // brain paints everything within the dura.
 func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	m := mirrored(p)
-	cerebrum := a.cerebrum(p, cavity)
+	fossa := math.Inf(-1)
+	if p[2] < 8 {
+		fossa = a.fossa.at(p)
+	}
+	cerebrum := a.cerebrum(p, cavity, fossa)
 	if cerebrum > -c.edge {
 		a.hemispheres(p, c, cerebrum)
 	}
@@ -256,22 +260,26 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	if ends := min(cavity-5, -a.deep.at(p)-5); p[2] > -8 && ends > -c.edge {
 		c.cover(dura, c.slab(math.Abs(p[0]), 0.55)*min(ends/c.edge+0.5, 1))
 	}
-	fossa := a.fossa.at(p)
 	if cavity > 1 && p[1] < -14 && p[2] > -30 {
 		c.cover(dura, c.slab(math.Abs(fossa+0.6), 0.6)*min((m[0]-7)/c.edge+0.5, 1))
 	}
 	if cerebellum := min(a.cerebellum.at(p), fossa-1.6); cerebellum > -c.edge {
 		a.paintCerebellum(p, c, cerebellum)
 	}
-	stem := a.stem.at(mirrored(p))
-	c.paint(brainStem, stem)
+	stem := -float64(reach)
+	if p[2] < 14 {
+		stem = a.stem.at(m)
+		c.paint(brainStem, stem)
+	}
 	if p[2] < 4 && p[2] > -42 && p[1] < 0 {
 		c.paint(substantiaNigra, min(substantiaPipe.near(m), stem-1.2))
 		c.paint(redNucleus, min(blob(m, vec{5, -17.5, -5.5}, vec{3, 3, 4.2}), stem))
 		dentateShell := blob(m, vec{15, -58, -33}, vec{7, 9, 5.5})
 		c.paint(dentate, min(dentateShell, 1.8-dentateShell)) // a folded sheet, open inside
 	}
-	c.paint(csf, a.fourthVentricle(p))
+	if p[2] < 4 && m[0] < 9 {
+		c.paint(csf, a.fourthVentricle(p))
+	}
 	a.vessels(p, c, cavity)
 	for _, l := range a.lesions {
 		l.paint(a, p, c)
@@ -286,19 +294,19 @@ func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 	gap := a.fissure(p) // to the great fissures
 	crown := surface    // to the outer surface
 	sulcus := 40.0      // to the nearest sulcus
-	if surface < 32 && deep < 8 {
+	if min(surface, gap) < 32 && deep < 8 {
 		sulcus = math.Abs(a.sulci.at(p))
 		deepest := sulcus
 		uneven := a.warpX.at(vec{p[1], p[2], p[0]})
-		// A sulcus ends about 8..24 mm below the surface and before the deep part.
-		if end := max(surface-14.5-4*uneven, deep+4); end > 0 {
-			sulcus = math.Hypot(sulcus, end)
+		// A sulcus ends about 8..24 mm below the surface, outer or medial, and before the deep part.
+		if end := max(min(surface, gap+4.3)-14-4.5*uneven, deep+4); end > 0 {
+			sulcus = hypot(sulcus, end)
 		}
-		if surface < 16 {
+		if min(surface, gap) < 16 {
 			shallow := math.Abs(a.shallow.at(p))
 			// It keeps clear of the sulci that reach deep.
-			if end := max(surface-7-2*uneven, deep+4, 7.5-deepest); end > 0 {
-				shallow = math.Hypot(shallow, end)
+			if end := max(min(surface, gap+3)-7-2*uneven, deep+4, 7.5-deepest); end > 0 {
+				shallow = hypot(shallow, end)
 			}
 			sulcus = min(sulcus, shallow)
 		}
@@ -342,7 +350,7 @@ func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 func (a *anatomy) paintCerebellum(p vec, c *canvas, surface float64) {
 	fissure := a.folia(p)
 	if surface > 14 {
-		fissure = math.Hypot(fissure, surface-14)
+		fissure = hypot(fissure, surface-14)
 	}
 	pia := min(surface, fissure-0.35)
 	c.paint(cortex, surface)
