@@ -94,6 +94,9 @@ func measure(t *testing.T, size [3]int, edge float64, grey, white func(n int) fl
 
 // The measure gives the published fractions of the real average.
 func TestRealProfile(t *testing.T) {
+	if testing.Short() {
+		t.Skip("a volume of seven million voxels")
+	}
 	read := func(kind string) *maps.Volume {
 		f, err := os.Open(mapstest.Shared(t, "../..", "data/icbm2009a/mni_icbm152_"+kind+"_tal_nlin_sym_09a_converted.nii.gz"))
 		if err != nil {
