@@ -79,12 +79,12 @@ func TestThroughSlice(t *testing.T) {
 	gre := Scan{Sequence: SpoiledGRE, Timing: maps.Timing{TR: 0.5, TE: 0.02, Flip: 30 * deg}}
 	whole := cmplx.Abs(model(t, gre).one(brain, Condition{})[0])
 	for hz, left := range map[float64]float64{0: 1, 25: 2 / math.Pi, 50: 0, 75: 2 / (3 * math.Pi)} {
-		if got := cmplx.Abs(model(t, gre).one(brain, Condition{Gradient: hz})[0]) / whole; math.Abs(got-left) > 1e-12 {
+		if got := cmplx.Abs(model(t, gre).one(brain, Condition{Gradient: [3]float64{0, 0, hz}})[0]) / whole; math.Abs(got-left) > 1e-12 {
 			t.Errorf("%g Hz across the slice: %g left: want |sinc| = %g", hz, got, left)
 		}
 	}
 	se := Scan{Sequence: SpinEcho, Timing: maps.Timing{TR: 0.5, TE: 0.02}}
-	if a, b := model(t, se).one(brain, Condition{})[0], model(t, se).one(brain, Condition{Gradient: 50})[0]; a != b {
+	if a, b := model(t, se).one(brain, Condition{})[0], model(t, se).one(brain, Condition{Gradient: [3]float64{50}})[0]; a != b {
 		t.Errorf("spin echo %v became %v", a, b)
 	}
 }
@@ -118,8 +118,8 @@ func TestSliceProfile(t *testing.T) {
 	f := s.Complete().flips()
 	s.Geometry.Profile = ""
 	var want float64
-	for i, a := range f.angle {
-		want += f.weight[i] * real(model(t, s).one(brain, Condition{B1: a})[0])
+	for _, a := range f.angle {
+		want += f.weight * real(model(t, s).one(brain, Condition{B1: a})[0])
 	}
 	if math.Abs(got-want) > 1e-12 || got == plain {
 		t.Errorf("fast spin echo %g: want %g (without profile %g)", got, want, plain)
@@ -129,6 +129,14 @@ func TestSliceProfile(t *testing.T) {
 	pools := model(t, echoes).Pools(brain, Condition{}, 0)
 	if d := real(pools[0].Echoes[3]) - got; math.Abs(d) > 1e-12 {
 		t.Errorf("echo 4 of the train differs from the picture by %g", d)
+	}
+	// A train of readouts follows the profile at both levels too.
+	mp := Scan{Sequence: PreparedGRE, Timing: maps.Timing{TR: 2.3, TE: 0.003, TI: 0.9, Flip: 12 * deg}, Train: Train{Length: 64, Spacing: 0.007}}
+	mp.Geometry.Profile = "gaussian"
+	m := model(t, mp)
+	centre := m.scan.Train.Echo
+	if a, b := m.Pools(brain, Condition{}, 0)[0].Echoes[centre-1], m.one(brain, Condition{})[0]; cmplx.Abs(a-b) > 1e-12 {
+		t.Errorf("prepared gradient echo: readout %d of the train %v, picture %v", centre, a, b)
 	}
 }
 
@@ -191,7 +199,7 @@ func TestTabulated(t *testing.T) {
 			t.Fatal(err)
 		}
 	}
-	f := NewFields(set, maps.Vec{0, 0, 1}, Slice{Thickness: 1, Across: 1})
+	f := NewFields(set, [3]float64{0, 0, 1}, 1)
 	for _, s := range []Scan{
 		{Name: "train", Sequence: FastSpinEcho, Timing: maps.Timing{TR: 3, TE: 0.1}, Train: Train{Length: 16, Spacing: 0.01, Angles: []float64{130 * deg}}},
 		{Name: "fluid", Sequence: InversionRecovery, Timing: maps.Timing{TR: 9, TE: 0.1, TI: 2.2}, Train: Train{Length: 16, Spacing: 0.01}},
@@ -222,38 +230,47 @@ func TestTabulated(t *testing.T) {
 	}
 }
 
-// Fields read what the maps say: the gradient of B0 over the slice, speed over
-// thickness, and nothing where there is no map.
+// Fields read what the maps say: the change of B0 over the extent of a voxel,
+// speed over thickness, and nothing where there is no map. A B1 map with failed
+// voxels spans those that did not fail.
 func TestFields(t *testing.T) {
 	g := maps.NewGrid([3]int{4, 4, 6}, [3]float64{2, 2, 3})
 	set := maps.NewSet(g)
-	if f := NewFields(set, maps.Vec{0, 0, 1}, Slice{3, 3}); f != nil || f.At(0, 0, 0) != (Condition{}) {
+	if f := NewFields(set, [3]float64{0, 0, 1}, 3); f != nil || f.At(0, 0, 0) != (Condition{}) {
 		t.Error("fields without maps")
 	}
-	b0, v := maps.NewVolume(g), maps.NewVolume(g)
+	b0, b1, v := maps.NewVolume(g), maps.NewVolume(g), maps.NewVolume(g)
 	for n := range b0.Data {
 		p := g.IJK(n)
-		b0.Data[n] = float32(5*p[0] + 12*p[2]) // 2.5 Hz/mm and 4 Hz/mm
+		b0.Data[n] = float32(5*p[0] + 12*p[2])
+		b1.Data[n] = 0.8 + 0.1*float32(p[1])
 		v.Data[n] = 60
 	}
-	set.Add(maps.B0, b0)
-	set.Add(maps.Velocity, v)
+	b1.Data[5], b1.Data[6], b1.Data[7] = float32(math.NaN()), float32(math.Inf(1)), 0
+	for q, x := range map[maps.Quantity]*maps.Volume{maps.B0: b0, maps.B1: b1, maps.Velocity: v} {
+		if err := set.Add(q, x); err != nil {
+			t.Fatal(err)
+		}
+	}
 	for _, c := range []struct {
-		normal maps.Vec
-		s      Slice
-		want   Condition
+		extent    [3]float64
+		thickness float64
+		want      Condition
 	}{
-		{maps.Vec{0, 0, 1}, Slice{5, 5}, Condition{Gradient: 20, Flow: 12}},
-		{maps.Vec{0, 0, -1}, Slice{5, 3}, Condition{Gradient: 12, Flow: 12}},
-		{maps.Vec{1, 0, 0}, Slice{4, 4}, Condition{Gradient: 10, Flow: 15}},
-		{maps.Vec{0.6, 0, 0.8}, Slice{10, 10}, Condition{Gradient: 15 + 32, Flow: 6}},
+		{[3]float64{0, 0, 2}, 5, Condition{Gradient: [3]float64{0, 0, 24}, Flow: 12}},
+		{[3]float64{1, 1, 1}, 3, Condition{Gradient: [3]float64{5, 0, 12}, Flow: 20}},
 	} {
-		for _, at := range [][3]int{{0, 0, 0}, {2, 1, 3}, {3, 3, 5}} {
+		f := NewFields(set, c.extent, c.thickness)
+		for _, at := range [][3]int{{0, 0, 0}, {2, 2, 3}, {3, 3, 5}} {
 			want := c.want
-			want.B0 = float64(b0.Data[g.Index(at[0], at[1], at[2])])
-			if got := NewFields(set, c.normal, c.s).At(at[0], at[1], at[2]); math.Abs(got.Gradient-want.Gradient) > 1e-4 || got.Flow != want.Flow || got.B0 != want.B0 {
-				t.Errorf("normal %v at %v: %+v: want %+v", c.normal, at, got, want)
+			n := g.Index(at[0], at[1], at[2])
+			want.B0, want.B1 = float64(b0.Data[n]), float64(b1.Data[n])
+			if got := f.At(at[0], at[1], at[2]); got != want {
+				t.Errorf("extent %v at %v: %+v: want %+v", c.extent, at, got, want)
 			}
+		}
+		if lo, hi := f.Span(); math.Abs(lo-0.8) > 1e-6 || math.Abs(hi-1.1) > 1e-6 {
+			t.Errorf("B1 spans %g..%g: want 0.8..1.1", lo, hi)
 		}
 	}
 }

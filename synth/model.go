@@ -27,7 +27,7 @@ type Model struct {
 	// inflow, where it is set, replaces pool for water of which a share is
 	// renewed in every TR.
 	inflow func(p maps.Pool, t maps.Timing, renewed float64) float64
-	// train, of sequences with refocusing trains, sets dst to the echoes.
+	// train, of sequences with a train, sets dst to its echoes or readouts.
 	train func(dst []float64, p maps.Pool, t maps.Timing)
 	// offset, of sequences whose signal depends on the frequency itself, is the
 	// complex signal per unit PD df Hz off resonance; it replaces pool and phase.
@@ -149,6 +149,11 @@ func preparedGRE(m *Model) error {
 	train := m.scan.readTrain()
 	m.dephases = true
 	m.pool = func(p maps.Pool, t maps.Timing, _ int) float64 { return signal.PreparedGRE(p, t, train, train.Centre) }
+	m.train = func(dst []float64, p maps.Pool, t maps.Timing) {
+		for i := range dst {
+			dst[i] = signal.PreparedGRE(p, t, train, i+1)
+		}
+	}
 	return nil
 }
 
@@ -253,9 +258,9 @@ func fastSpinEcho(f func([]float64, maps.Pool, maps.Timing, *epg.Train, *epg.Wor
 	}
 }
 
-// seen returns the pool as an echo train sees it.
+// seen returns the pool as a train of refocusing pulses sees it.
 func (m *Model) seen(p maps.Pool) maps.Pool {
-	if m.train != nil {
+	if m.train != nil && !m.dephases {
 		p.T2, p.T2Train = signal.TrainT2(p, m.scan.Train.Spacing), 0
 	}
 	return p
@@ -409,16 +414,8 @@ func (m *Model) turns(te float64, c Condition) (water, fat complex128) {
 	if !m.dephases {
 		return 1, 1
 	}
-	water = cmplx.Rect(sinc(c.Gradient*te), 2*math.Pi*c.B0*te)
+	water = c.turned(te)
 	return water, water * signal.FatPhase(te, m.field)
-}
-
-// sinc is sin(pi x)/(pi x).
-func sinc(x float64) float64 {
-	if x == 0 {
-		return 1
-	}
-	return math.Sin(math.Pi*x) / (math.Pi * x)
 }
 
 // Combine returns the pixel of an image kind from the channels of a voxel. An

@@ -235,6 +235,16 @@ func TestAgent(t *testing.T) {
 	if a, b := m.one(up, Condition{})[0], plain.one(want, Condition{})[0]; cmplx.Abs(a-b) > 1e-12 {
 		t.Errorf("%v: want %v", a, b)
 	}
+	// One relaxivity stated: the other is the agent's own; none is taken as 0.
+	s.Agent = &Agent{Name: "gadobutrol", R1: 3}
+	want.Pool = signal.Enhance(brain.Pool, 0.4, 3, 6.1)
+	if a, b := model(t, s).one(up, Condition{})[0], plain.one(want, Condition{})[0]; cmplx.Abs(a-b) > 1e-12 {
+		t.Errorf("r1 stated: %v: want %v", a, b)
+	}
+	s.Agent = &Agent{Name: "of our own", R1: 3}
+	if _, err := NewModel(1.5, s); err == nil || !strings.Contains(err.Error(), "state r1 and r2") {
+		t.Errorf("unknown agent with r1 only: %v", err)
+	}
 	s.Agent = &Agent{Name: "gadobutrole"}
 	if _, err := NewModel(1.5, s); err == nil || !strings.Contains(err.Error(), "did you mean gadobutrol?") {
 		t.Errorf("misspelt agent: %v", err)

@@ -71,7 +71,7 @@ var relaxivities = map[string]map[float64][2]float64{
 
 // complete fills in the relaxivities of a known agent.
 func (a *Agent) complete(field float64) error {
-	if a.R1 > 0 {
+	if a.R1 > 0 && a.R2 > 0 {
 		return nil
 	}
 	var names []string
@@ -86,6 +86,12 @@ func (a *Agent) complete(field float64) error {
 	if !ok {
 		return fmt.Errorf("agent %q has no relaxivity at %g T (there is one at 1.5 and 3 T): state r1 and r2", a.Name, field)
 	}
-	a.R1, a.R2 = r[0], r[1]
+	// One of them may have been stated.
+	if a.R1 == 0 {
+		a.R1 = r[0]
+	}
+	if a.R2 == 0 {
+		a.R2 = r[1]
+	}
 	return nil
 }

@@ -1,9 +1,6 @@
 package synth
 
 import (
-	"math"
-	"math/cmplx"
-
 	"voxelproof/maps"
 	"voxelproof/synth/signal"
 )
@@ -33,7 +30,7 @@ func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
 	if m.dephases {
 		te := m.te(channel)
 		turned = te
-		turn = cmplx.Rect(sinc(c.Gradient*te), 2*math.Pi*c.B0*te)
+		turn = c.turned(te)
 	}
 	add := func(fat bool, pd float64, p maps.Pool) {
 		if pd == 0 {
@@ -53,12 +50,6 @@ func (m *Model) Pools(t maps.Tissue, c Condition, channel int) []PoolSignal {
 		case m.train != nil:
 			values = make([]float64, m.scan.Train.Length)
 			m.train(values, p, tm)
-		case m.scan.Sequence == PreparedGRE:
-			train := m.scan.readTrain()
-			values = make([]float64, train.Length)
-			for i := range values {
-				values[i] = signal.PreparedGRE(p, tm, train, i+1)
-			}
 		case fat:
 			values[0] = m.pool(p, tm, channel)
 		default:

@@ -24,9 +24,12 @@ func (g Geometry) Shape() (shape func(x float64) float64, reach float64) {
 	return func(float64) float64 { return 1 }, 0.5
 }
 
-// flips are the flip angles across a slice relative to the nominal one, with
-// weights such that a signal proportional to the flip angle keeps its value.
-type flips struct{ angle, weight []float64 }
+// flips are the flip angles across a slice relative to the nominal one, each
+// with a weight such that a signal proportional to the flip angle keeps its value.
+type flips struct {
+	angle  []float64
+	weight float64
+}
 
 // flipSamples is how many flip angles stand for half a slice (the other half is
 // the same).
@@ -46,9 +49,7 @@ func (s Scan) flips() flips {
 		f.angle = append(f.angle, a)
 		sum += a
 	}
-	for range flipSamples {
-		f.weight = append(f.weight, 1/sum)
-	}
+	f.weight = 1 / sum
 	return f
 }
 
@@ -58,29 +59,30 @@ func (m *Model) across(f flips) {
 	if len(f.angle) == 0 {
 		return
 	}
-	each := func(t maps.Timing, add func(t maps.Timing, w float64)) {
-		for i, a := range f.angle {
+	w := f.weight
+	each := func(t maps.Timing, add func(t maps.Timing)) {
+		for _, a := range f.angle {
 			u := t
 			u.Flip *= a
 			u.Refocus *= a
-			add(u, f.weight[i])
+			add(u)
 		}
 	}
 	if slow := m.slow; slow != nil {
 		m.slow = func(p maps.Pool, t maps.Timing) (sum float64) {
-			each(t, func(t maps.Timing, w float64) { sum += float64(w * slow(p, t)) })
+			each(t, func(t maps.Timing) { sum += float64(w * slow(p, t)) })
 			return sum
 		}
 	}
 	if inflow := m.inflow; inflow != nil {
 		m.inflow = func(p maps.Pool, t maps.Timing, renewed float64) (sum float64) {
-			each(t, func(t maps.Timing, w float64) { sum += float64(w * inflow(p, t, renewed)) })
+			each(t, func(t maps.Timing) { sum += float64(w * inflow(p, t, renewed)) })
 			return sum
 		}
 	}
 	if pool := m.pool; pool != nil {
 		m.pool = func(p maps.Pool, t maps.Timing, ch int) (sum float64) {
-			each(t, func(t maps.Timing, w float64) { sum += float64(w * pool(p, t, ch)) })
+			each(t, func(t maps.Timing) { sum += float64(w * pool(p, t, ch)) })
 			return sum
 		}
 	}
@@ -88,7 +90,7 @@ func (m *Model) across(f flips) {
 		m.train = func(dst []float64, p maps.Pool, t maps.Timing) {
 			one := make([]float64, len(dst))
 			clear(dst)
-			each(t, func(t maps.Timing, w float64) {
+			each(t, func(t maps.Timing) {
 				train(one, p, t)
 				for i, x := range one {
 					dst[i] += float64(w * x)
@@ -98,7 +100,7 @@ func (m *Model) across(f flips) {
 	}
 	if offset := m.offset; offset != nil {
 		m.offset = func(p maps.Pool, t maps.Timing, df float64) (sum complex128) {
-			each(t, func(t maps.Timing, w float64) { sum += complex(w, 0) * offset(p, t, df) })
+			each(t, func(t maps.Timing) { sum += complex(w, 0) * offset(p, t, df) })
 			return sum
 		}
 	}

@@ -70,6 +70,11 @@ func (l *lattice) at(p vec) float64 {
 
 // parallel runs f(0) to f(n-1) on all cores.
 func parallel(ctx context.Context, n int, f func(k int)) error {
+	return parallelErr(ctx, n, func(k int) error { f(k); return nil })
+}
+
+// parallelErr is parallel for what may fail.
+func parallelErr(ctx context.Context, n int, f func(k int) error) error {
 	eg, ctx := errgroup.WithContext(ctx)
 	workers := min(runtime.GOMAXPROCS(0), n)
 	for w := range workers {
@@ -78,7 +83,9 @@ func parallel(ctx context.Context, n int, f func(k int)) error {
 				if err := ctx.Err(); err != nil {
 					return err
 				}
-				f(k)
+				if err := f(k); err != nil {
+					return err
+				}
 			}
 			return nil
 		})

@@ -2,8 +2,10 @@ package head
 
 import "math"
 
-// sulcusHalf is the half width of a sulcus at depth in mm.
-const sulcusHalf = 0.4
+const (
+	sulcusHalf  = 0.4 // mm, half width of a sulcus at depth
+	cortexThick = 2.7 // mm; adults have 2.5 on average (Fischl and Dale, PNAS 97 (2000) 11050, from memory)
+)
 
 // canvas collects the shares of one sampled point: each layer covers what lies
 // below it in proportion to how much of the sample it fills.
@@ -16,6 +18,20 @@ type canvas struct {
 // mixed marks a sample of several tissues: most samples have one, and are
 // painted over many times, so shares are only written when there are several.
 const mixed = tissue(255)
+
+// settled handles what needs no shares: a layer that covers nothing new, or all.
+// Otherwise it leaves the sample mixed and returns false.
+func (c *canvas) settled(t tissue, f float64) bool {
+	switch {
+	case f <= 0 || c.only == t:
+	case f >= 1:
+		c.only = t
+	default:
+		c.mix()
+		return false
+	}
+	return true
+}
 
 // mix writes the shares of a sample of one tissue.
 func (c *canvas) mix() {
@@ -30,18 +46,17 @@ func (c *canvas) mix() {
 }
 
 // paint covers the sample with a tissue of signed distance d.
-func (c *canvas) paint(t tissue, d float64) { c.cover(t, d/c.edge+0.5) }
+func (c *canvas) paint(t tissue, d float64) {
+	if f := d/c.edge + 0.5; f > 0 { // most layers are elsewhere: no call for them
+		c.cover(t, f)
+	}
+}
 
 // cover covers a share of the sample with a tissue.
 func (c *canvas) cover(t tissue, f float64) {
-	if f <= 0 || c.only == t {
+	if c.settled(t, f) {
 		return
 	}
-	if f >= 1 {
-		c.only = t
-		return
-	}
-	c.mix()
 	for i := range c.shares {
 		c.shares[i] *= 1 - f
 	}
@@ -53,14 +68,9 @@ func (c *canvas) cover(t tissue, f float64) {
 // alike, a layer thinner than a voxel would come out too thick.
 func (c *canvas) within(t tissue, d float64, host tissue) {
 	f := d/c.edge + 0.5
-	if f <= 0 || c.only == t {
+	if c.settled(t, f) {
 		return
 	}
-	if f >= 1 {
-		c.only = t
-		return
-	}
-	c.mix()
 	moved := min(f, c.shares[host])
 	c.shares[host] -= moved
 	c.shares[t] += moved
@@ -82,14 +92,9 @@ func (c *canvas) slab(x, half float64) float64 {
 // open removes what lies below, as air does.
 func (c *canvas) open(d float64) {
 	f := d/c.edge + 0.5
-	if f <= 0 || c.only == numTissues {
+	if c.settled(numTissues, f) {
 		return
 	}
-	if f >= 1 {
-		c.only = numTissues
-		return
-	}
-	c.mix()
 	for i := range c.shares {
 		c.shares[i] *= 1 - f
 	}
@@ -238,7 +243,7 @@ func (a *anatomy) airways(p, m vec, c *canvas) {
 	turbinate := max(turbinateLow.near(m), turbinateMid.near(m))
 	air(nasal)
 	c.paint(mucosa, turbinate)
-	air(min(throatPipe.near(p)))
+	air(throatPipe.near(p))
 	air(min(blob(p, vec{0, 62, -63}, vec{17, 22, 3.2})))
 	ear := earPipe.near(m)
 	air(ear)
@@ -251,12 +256,14 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	if p[2] < 8 {
 		fossa = a.fossa.at(p)
 	}
-	cerebrum := a.cerebrum(p, cavity, fossa)
-	if cerebrum > -c.edge {
-		a.hemispheres(p, c, cerebrum)
+	stem := -float64(reach)
+	if p[2] < 14 {
+		stem = a.stem.at(m)
 	}
-	// Falx and tentorium.
-	// The sinus lies in the root of the falx.
+	if cerebrum := a.cerebrum(p, cavity, fossa); cerebrum > -c.edge {
+		a.hemispheres(p, c, cerebrum, stem)
+	}
+	// Falx and tentorium; the sinus lies in the root of the falx.
 	if ends := min(cavity-5, -a.deep.at(p)-5); p[2] > -8 && ends > -c.edge {
 		c.cover(dura, c.slab(math.Abs(p[0]), 0.55)*min(ends/c.edge+0.5, 1))
 	}
@@ -266,11 +273,7 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	if cerebellum := min(a.cerebellum.at(p), fossa-1.6); cerebellum > -c.edge {
 		a.paintCerebellum(p, c, cerebellum)
 	}
-	stem := -float64(reach)
-	if p[2] < 14 {
-		stem = a.stem.at(m)
-		c.paint(brainStem, stem)
-	}
+	c.paint(brainStem, stem)
 	if p[2] < 4 && p[2] > -42 && p[1] < 0 {
 		c.paint(substantiaNigra, min(substantiaPipe.near(m), stem-1.2))
 		c.paint(redNucleus, min(blob(m, vec{5, -17.5, -5.5}, vec{3, 3, 4.2}), stem))
@@ -288,17 +291,17 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 
 // hemispheres paints the cerebrum: folded cortex over white matter, with what
 // lies deep in it.
-func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
+func (a *anatomy) hemispheres(p vec, c *canvas, surface, stem float64) {
 	m := mirrored(p)
 	deep := a.deep.at(p)
 	gap := a.fissure(p) // to the great fissures
-	crown := surface    // to the outer surface
 	sulcus := 40.0      // to the nearest sulcus
 	if min(surface, gap) < 32 && deep < 8 {
 		sulcus = math.Abs(a.sulci.at(p))
 		deepest := sulcus
 		uneven := a.warpX.at(vec{p[1], p[2], p[0]})
-		// A sulcus ends about 8..24 mm below the surface, outer or medial, and before the deep part.
+		// A sulcus ends about 8..24 mm below the surface, outer or medial, and before
+		// the deep part.
 		if end := max(min(surface, gap+4.3)-14-4.5*uneven, deep+4); end > 0 {
 			sulcus = hypot(sulcus, end)
 		}
@@ -312,7 +315,7 @@ func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 		}
 	}
 	widen := 0.4*max(0, 1-surface/6) + 0.5*a.atrophy // open toward the surface
-	pia := min(crown, sulcus-sulcusHalf-widen, gap-0.55)
+	pia := min(surface, sulcus-sulcusHalf-widen, gap-0.55)
 	// Sulci are thinner than most voxels: fluid fills of the brain what their
 	// sheets fill of the voxel.
 	inside := min(surface/c.edge+0.5, 1)
@@ -323,9 +326,7 @@ func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 		}
 		c.cover(cortex, inside*(1-fluid))
 	}
-	cortexThick := 2.7
-	white := pia - cortexThick
-	c.within(whiteMatter, white, cortex)
+	c.within(whiteMatter, pia-cortexThick, cortex)
 	if deep > -2 {
 		c.paint(whiteMatter, min(deep, gap-1.2))
 	}
@@ -340,7 +341,6 @@ func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 	if p[2] > 14 || p[2] < -50 {
 		return
 	}
-	stem := a.stem.at(mirrored(p))
 	// Cisterns about the midbrain and above the sella.
 	c.paint(csf, meet(min(4.5-math.Abs(stem+3.5), surface+6), -p[2], 8))
 	c.paint(csf, meet(blob(p, vec{0, 6, -11}, vec{12, 10, 6}), 9-math.Abs(p[0])-0.4*math.Abs(p[1]-6), 5))

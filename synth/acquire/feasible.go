@@ -31,8 +31,8 @@ func Typical() Hardware {
 // String states the assumed times in one line.
 func (h Hardware) String() string {
 	ms := func(v float64) string { return fmt.Sprintf("%.3g", v*1e3) }
-	return fmt.Sprintf("assumed times (ms): excitation %s (gradient echo %s), refocusing %s, inversion %s, gradient lobe %s, EPI ramps %s, spoiler %s, fat pulse %s; diffusion gradient %g mT/m (common practice)",
-		ms(h.Excite), ms(h.Short), ms(h.Refocus), ms(h.Invert), ms(h.Lobe), ms(h.Blip), ms(h.Spoil), ms(h.FatPulse), h.Gradient)
+	return fmt.Sprintf("assumed times (ms): excitation %s (gradient echo %s), refocusing %s, inversion %s, gradient lobe %s, EPI ramps %s, spoiler %s, fat pulse %s, switch to reception %s; diffusion gradient %g mT/m (common practice)",
+		ms(h.Excite), ms(h.Short), ms(h.Refocus), ms(h.Invert), ms(h.Lobe), ms(h.Blip), ms(h.Spoil), ms(h.FatPulse), ms(h.Switch), h.Gradient)
 }
 
 // tooShort says which number to change, and to what.

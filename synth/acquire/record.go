@@ -59,7 +59,7 @@ func Leaves(s synth.Scan, x *Prescription) []string {
 		n = append(n, fmt.Sprintf("acceleration %g by undersampling counts as noise only (g = %g, sqrt R): no residual aliasing", x.Speed, x.GFactor))
 	}
 	if x.Coils > 1 {
-		n = append(n, fmt.Sprintf("%d coils of equal noise combined by root sum of squares, without shading", x.Coils))
+		n = append(n, fmt.Sprintf("%d coils of equal noise and sensitivity combined by root sum of squares", x.Coils))
 	}
 	if s.Geometry.Volume3D {
 		n = append(n, "3D: partitions by a truncated Fourier sum over an ideal slab; slab edges and wrap along slices left out")
@@ -74,6 +74,6 @@ func Leaves(s synth.Scan, x *Prescription) []string {
 		n = append(n, fmt.Sprintf("slice cross-talk left out: a gap of %.3g mm is %.0f %% of the slice, below 20 %% (common practice)", x.Gap, math.Round(100*x.Gap/x.Thickness)))
 	}
 	return append(n,
-		"left out: flow and pulsation, motion, magnetisation transfer (white matter 10..25 % too bright in multi-slice fast spin echo, from memory)",
+		"left out: pulsation, motion, flow and field offsets unless maps of them are given, magnetisation transfer (white matter 10..25 % too bright in multi-slice fast spin echo, from memory)",
 		"left out: anisotropy, exchange and multi-component relaxation within a tissue")
 }

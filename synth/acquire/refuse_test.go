@@ -57,7 +57,7 @@ func TestRefused(t *testing.T) {
 		{"TR", func(s *synth.Scan) { s.TR = 0.0145 }, "TR = 14.5 ms is too short: want at least 20.1 ms"},
 		{"memory", func(s *synth.Scan) {
 			s.Geometry.Matrix, s.Geometry.Slices, s.Geometry.Thickness = [2]int{4096, 4096}, 400, 0.1
-		}, "memory: the k-space of 400 slices of 4096x4096 needs up to"},
+		}, "memory: slices of 4096x4096 need up to"},
 	} {
 		s := spinEcho()
 		c.change(&s)

@@ -20,7 +20,7 @@ type Options struct {
 	Noiseless     bool
 	SinglePeakFat bool     // fat as one peak at -3.4 ppm
 	Hardware      Hardware // zero = Typical
-	MaxMemory     int64    // bytes that kept transforms may take; 0 = 2 GiB
+	MaxMemory     int64    // bytes that transforms may take; 0 = 2 GiB
 }
 
 // Series returns the series of scan number index (from 0) of a protocol, one
@@ -132,7 +132,8 @@ type cacheKey struct {
 }
 
 // encoded holds the k-space of an object's components at one geometry, slice by
-// slice, as they are asked for.
+// slice, as they are asked for. Without slots it keeps nothing: a volume may be
+// larger than memory, while a slice of it is not.
 type encoded struct {
 	f     *fine
 	slots []slot
@@ -147,6 +148,9 @@ type slot struct {
 
 // slice returns the components of slice k, made on first use.
 func (e *encoded) slice(ctx context.Context, k int) ([]part, error) {
+	if e.slots == nil {
+		return e.f.slice(ctx, k)
+	}
 	s := &e.slots[k]
 	s.mu.Lock()
 	defer s.mu.Unlock()
@@ -197,14 +201,18 @@ func (o *Object) encode(r *scanner, ex expander, opt Options) (*encoded, error) 
 	if err != nil {
 		return nil, err
 	}
-	e := &encoded{f: f, slots: make([]slot, r.p.Slices)}
+	e := &encoded{f: f}
+	all, each := o.estimate(f)
 	shown := int64(r.p.Shown[0]) * int64(f.wide) * int64(r.p.Shown[1]) * 64
-	workers := int64(runtime.GOMAXPROCS(0))
-	e.bytes = o.estimate(f)
-	if total := e.bytes + workers*(f.memory()+shown); total > limit {
-		return nil, fmt.Errorf("memory: the k-space of %d slices of %dx%d needs up to %s: want at most %s; lower the matrix or the number of slices",
-			r.p.Slices, r.p.Matrix.Read, r.p.Matrix.Phase, gib(total), gib(limit))
+	at := int64(runtime.GOMAXPROCS(0)) * (f.memory() + shown)
+	if need := at + int64(runtime.GOMAXPROCS(0))*each; need > limit {
+		return nil, fmt.Errorf("memory: slices of %dx%d need up to %s: want at most %s; lower the matrix",
+			r.p.Matrix.Read, r.p.Matrix.Phase, gib(need), gib(limit))
 	}
+	if at+all > limit {
+		return e, nil
+	}
+	e.slots, e.bytes = make([]slot, r.p.Slices), all
 	if o.fields {
 		return e, nil // signals of this scan: nobody else can use them
 	}
@@ -227,16 +235,16 @@ func (o *Object) encode(r *scanner, ex expander, opt Options) (*encoded, error) 
 	return e, nil
 }
 
-// estimate bounds the kept k-space of a geometry in bytes: a half plane for
-// every tissue in every slice that meets its box.
-func (o *Object) estimate(f *fine) int64 {
+// estimate bounds the k-space of a geometry in bytes, of all slices and of any
+// one: a half plane for every tissue in every slice that meets its box.
+func (o *Object) estimate(f *fine) (all, each int64) {
 	half := int64(f.keep.HalfLen()) * 8
 	if o.fields {
-		return half * int64(f.ex.components()) * int64(f.p.Slices)
+		each = half * int64(f.ex.components())
+		return each * int64(f.p.Slices), each
 	}
 	reach := f.p.Thickness*1.5 + o.spacingAlong(f.dirs[2])
 	mid := dot(f.dirs[2], f.centre)
-	var sum int64
 	for t, b := range o.boxes {
 		if b[1][0] < 0 {
 			continue
@@ -245,14 +253,15 @@ func (o *Object) estimate(f *fine) int64 {
 		if o.texture != nil && o.set.Mixture.Tissues[t].Vary != (maps.Variation{}) {
 			copies = 2
 		}
+		each += copies * half
 		lo, hi := o.extent(b, f.dirs[2])
 		for k := range f.p.Slices {
 			if z := mid + f.sliceCentre(k); f.scan.Geometry.Volume3D || z+reach > lo && z-reach < hi {
-				sum += copies * half
+				all += copies * half
 			}
 		}
 	}
-	return sum
+	return all, each
 }
 
 // predict returns the noise-free value of every tissue in an image kind.

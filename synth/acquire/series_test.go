@@ -134,6 +134,17 @@ func TestTransformsAreShared(t *testing.T) {
 	if !slices.Equal(first.Data, again.Data) {
 		t.Error("the first picture comes out differently")
 	}
+	// A volume that the limit does not hold is made slice by slice, the same.
+	many := spinEcho()
+	many.Geometry.Slices, many.Geometry.Thickness = 400, 0.1
+	kept := picture(t, o, 1.5, many, quiet)
+	n := len(o.cache)
+	many.Geometry.Offset[0] = 1e-9
+	if got := picture(t, o, 1.5, many, tight); len(o.cache) != n {
+		t.Errorf("%d sets of transforms, one of them beyond the limit: want %d", len(o.cache), n)
+	} else if !near(got.Data, kept.Data, 1e-6) {
+		t.Error("slices that are not kept come out differently")
+	}
 }
 
 // Receive sensitivity shades the signal and leaves the noise alone.
@@ -181,4 +192,14 @@ func TestCancel(t *testing.T) {
 	if err := ss[0].Slice(context.Background(), 0, dst[1:]); err == nil {
 		t.Error("short slice: want an error")
 	}
+}
+
+// near reports whether all values agree within tol.
+func near(a, b []float32, tol float64) bool {
+	for i := range a {
+		if math.Abs(float64(a[i]-b[i])) > tol {
+			return false
+		}
+	}
+	return len(a) == len(b)
 }

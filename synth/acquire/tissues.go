@@ -1,7 +1,6 @@
 package acquire
 
 import (
-	"math"
 	"math/cmplx"
 
 	"voxelproof/maps"
@@ -80,14 +79,9 @@ const maxBands = 256
 
 func newVoxels(o *Object, x *Signals) *voxels {
 	v := &voxels{o: o, x: x, echoes: 1, bands: 1}
-	normal := x.p.Axes[2]
-	// Sheets of a slice add up with their own phases; within one voxel of the maps
+	// What a pixel sums up comes with its own phases; within a voxel of the maps
 	// the phase is averaged.
-	across := 0.0
-	for a, d := range o.set.Grid.Dir {
-		across += math.Abs(d[0]*normal[0]+d[1]*normal[1]+d[2]*normal[2]) * o.set.Grid.Spacing[a]
-	}
-	v.fields = synth.NewFields(o.set, normal, synth.Slice{Thickness: x.p.Thickness, Across: across})
+	v.fields = synth.NewFields(o.set, [3]float64{1, 1, 1}, x.p.Thickness)
 	for _, e := range x.p.Lines.Echo {
 		v.echoes = max(v.echoes, e+1)
 	}

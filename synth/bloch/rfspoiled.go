@@ -29,11 +29,11 @@ func Period(increment float64) (int, error) {
 
 // RFSpoiled returns the transverse magnetisation just after the pulses of a
 // spoiled gradient echo as scanners make it, in the dynamic equilibrium and
-// relative to the phase of the pulse: pulse k (t.Flip) has the phase increment
-// k(k+1)/2 (rad, a whole multiple of 0.1 degrees, otherwise 0 is returned), and
-// gradients spread the voxel evenly over a full turn in every t.TR. The
-// imaginary part is that along a pulse of phase 0 with the opposite sign: ideal
-// spoiling gives -i sin(flip) Mz.
+// relative to the phase of the pulse: pulse k, of t.Flip, has the phase
+// increment k(k+1)/2 (rad, a whole multiple of 0.1 degrees, otherwise 0 is
+// returned), and gradients spread the voxel evenly over a full turn in every
+// t.TR. The pulse turns about the real axis, so that ideal spoiling would give
+// -i sin(flip) Mz.
 //
 // Seen from its pulse, an isochromat that precesses by theta per TR is after
 // one more TR where one of theta - increment was: a cycle of the phases
@@ -49,8 +49,8 @@ func RFSpoiled(p maps.Pool, t maps.Timing, increment float64) complex128 {
 	if err != nil {
 		return 0
 	}
-	const decades = 26 // exp(-26) = 5e-12
-	points := min(decades*p.T2/t.TR, 1<<18)
+	const lives = 26 // of T2: exp(-26) = 5e-12
+	points := min(lives*p.T2/t.TR, 1<<18)
 	fine := max(int(math.Ceil(points/float64(period))), (128+period-1)/period)
 	e1, e2 := math.Exp(-t.TR/p.T1), math.Exp(-t.TR/p.T2)
 	gain := -math.Expm1(-t.TR / p.T1)

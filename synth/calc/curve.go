@@ -99,6 +99,9 @@ func Trace(field float64, s synth.Scan, tissues []maps.Tissue, w Sweep) (*Curves
 	if len(c.X) < 2 {
 		return nil, fmt.Errorf("curve: %d points of %s can be computed: %w", len(c.X), w.Key, c.Why)
 	}
+	if w.Key != EchoKey && !slices.ContainsFunc(c.Curves, func(k Curve) bool { return slices.Min(k.Signal) != slices.Max(k.Signal) }) {
+		return nil, fmt.Errorf("curve: %s changes no signal of scan %q", w.Key, s.Name)
+	}
 	for i := range c.Curves {
 		k := &c.Curves[i]
 		k.Best = e.optimum(c.X, k.Signal, func(x float64) (float64, error) { return e.signal(x, i) })

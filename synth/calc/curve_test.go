@@ -141,6 +141,7 @@ func TestTraceRefuses(t *testing.T) {
 		"no tissue":               {s, Sweep{Key: "TE", From: 0.1, To: 0.2}, nil},
 		"does not use TI":         {s, Sweep{Key: "TI", From: 0.1, To: 0.2}, []maps.Tissue{x}},
 		"no train":                {s, Sweep{Key: EchoKey}, []maps.Tissue{x}},
+		"bandwidth changes no":    {s, Sweep{Key: "bandwidth", From: 100, To: 400}, []maps.Tissue{x}},
 		"has no ADC":              {dwi, Sweep{Key: "b", From: 10, To: 2000}, []maps.Tissue{x}},
 		"is not shorter than TR ": {s, Sweep{Key: "TE", From: 4, To: 5}, []maps.Tissue{x}},
 	} {

@@ -40,7 +40,9 @@ func Series(set *maps.Set, p *synth.Protocol, index int) ([]maps.Series, error) 
 	if scan.Geometry.Thickness > 0 && !scan.Geometry.Volume3D {
 		thickness = scan.Geometry.Thickness
 	}
-	r.fields = synth.NewFields(set, r.grid.Dir[2], synth.Slice{Thickness: thickness, Across: thickness})
+	var extent [3]float64
+	extent[r.view.Axis[2]] = thickness / r.grid.Spacing[2]
+	r.fields = synth.NewFields(set, extent, thickness)
 	r.voxelModel = sync.OnceValue(func() *synth.Model { return model.Tabulated(set, r.fields) })
 	if err := r.prepare(); err != nil {
 		return nil, err

@@ -9,6 +9,7 @@ import (
 	"voxelproof/phantom"
 	"voxelproof/synth"
 	"voxelproof/synth/calc"
+	"voxelproof/synth/library"
 )
 
 // Facts of the trade, with the tissues of the table (common practice where no
@@ -174,5 +175,34 @@ func TestNulls(t *testing.T) {
 		if !(null > most) || lo < 0.8 || lo > 0.98 {
 			t.Errorf("%g T: fat null %.0f ms, efficiency %.2f", field, null*1e3, lo)
 		}
+	}
+}
+
+// The library nulls what its scans are for: fluid on FLAIR and fat on STIR keep
+// at most 3 % of relaxed water, white matter and fluid on the double inversion
+// that shows grey matter at most 3 %.
+func TestLibraryNulls(t *testing.T) {
+	n := 0
+	for _, name := range library.Names() {
+		p, err := library.Get(name)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for _, s := range p.Scans {
+			for scan, tissues := range map[string][]string{"FLAIR": {"CSF"}, "STIR": {"fat"}, "DIR": {"CSF", "white matter"}} {
+				if !strings.Contains(s.Name, scan) {
+					continue
+				}
+				for _, tissue := range tissues {
+					n++
+					if x := signalOf(t, p.Field, s, named(t, p.Field, tissue)); math.Abs(x) > 0.03 {
+						t.Errorf("%s: %s: %s gives %.3f: want at most 0.03", name, s.Name, tissue, x)
+					}
+				}
+			}
+		}
+	}
+	if n < 14 {
+		t.Errorf("%d nulls checked", n)
 	}
 }

@@ -47,12 +47,6 @@ func (l *Loaded) fields(ctx context.Context, o Object, p Progress) error {
 	if err != nil {
 		return err
 	}
-	if l.flows {
-		// Whether there are vessels is known now, not after minutes of work.
-		if _, err := l.seen(ctx, maps.Axial); err != nil {
-			return err
-		}
-	}
 	l.Notes = append(l.Notes, notes...)
 	if len(o.Fields) > 0 {
 		l.Canonical += fmt.Sprintf("fields %q\n", o.Fields)

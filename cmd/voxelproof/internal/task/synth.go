@@ -270,9 +270,6 @@ func (s Synth) maker(ctx context.Context, l *Loaded) (in func(maps.Plane) (*acqu
 			objects[set], err = acquire.NewObject(set)
 			return objects[set], err
 		}
-		if _, err := in(maps.Axial); err != nil {
-			return nil, nil, err
-		}
 		return in, func(p *synth.Protocol, i int) ([]maps.Series, error) {
 			o, err := in(p.Scans[i].Plane)
 			if err != nil {

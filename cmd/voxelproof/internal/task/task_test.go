@@ -129,7 +129,7 @@ scans:
 // line.
 var golden = map[string]string{
 	"1": "9e9c58605274e0ec73061983e19c3dfaafdb59d717a0db66c9d6a72bee8c130e",
-	"2": "cdc17d468746efd89d60fdb950463d93e6995a0f0ce41c6214d13da2e146a2bf",
+	"2": "d5c7f31573fdfa3f8ab769b90c7b17460bfab75bc65ab611962a07ee9fce931b",
 }
 
 func TestGoldenFiles(t *testing.T) {
