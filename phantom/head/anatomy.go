@@ -9,9 +9,10 @@ import (
 // anatomy is one head: its seeded proportions and fields. World axes are RAS+
 // in mm; the origin lies between the thalami.
 type anatomy struct {
-	scale     vec          // size of the head along each axis, about 1
-	ventricle float64      // size of the ventricles, about 1
-	atrophy   float64      // 0 young .. 1 old: wider sulci and ventricles
+	scale     vec     // size of the head along each axis, about 1
+	ventricle float64 // size of the ventricles, about 1
+	atrophy   float64 // 0 young .. 1 old: wider sulci and ventricles
+	bend      *bend
 	folds     *randomField // of the sulci that reach deep
 	dimples   *randomField // of shallow ones between them
 	warpX     *randomField
@@ -33,6 +34,7 @@ func proportions(seed uint64, atrophy float64) *anatomy {
 		scale:     vec{vary(0.03), vary(0.03), vary(0.03)},
 		ventricle: vary(0.18) * (1 + 0.5*atrophy),
 		atrophy:   atrophy,
+		bend:      newBend(seed),
 	}
 }
 

@@ -235,7 +235,7 @@ func (a *anatomy) shade(texture *maps.Volume) {
 	for n := range texture.Data {
 		ijk := texture.Grid.IJK(n)
 		w := texture.Grid.World(maps.Vec{float64(ijk[0]), float64(ijk[1]), float64(ijk[2])})
-		depth := a.cavity.at(vec{w[0] / a.scale[0], w[1] / a.scale[1], w[2] / a.scale[2]})
+		depth := a.cavity.at(a.model(w))
 		if depth > 0 {
 			texture.Data[n] += float32(0.9 * math.Exp(-depth*depth/144))
 		}

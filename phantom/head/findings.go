@@ -84,9 +84,7 @@ func newLesions(findings []string, seed uint64, a *anatomy) ([]lesion, []request
 			return nil, nil, fmt.Errorf("finding %q is given twice", q.name)
 		}
 		if q.placed {
-			for d := range 3 { // from the world to the proportions of this head
-				q.at[d] /= a.scale[d]
-			}
+			q.at = a.model(q.at)
 			if what := a.tissueAt(q.at); !slices.Contains(brainTissues, what) && q.name != Meningioma {
 				where := "air"
 				if what != numTissues {
@@ -112,7 +110,7 @@ var brainTissues = []tissue{cortex, whiteMatter, caudate, putamen, pallidum, tha
 // tissueAt is the tissue that fills most of a point.
 func (a *anatomy) tissueAt(p vec) tissue {
 	c := canvas{shares: make([]float64, numTissues), edge: 0.5}
-	a.sample(vec{p[0] * a.scale[0], p[1] * a.scale[1], p[2] * a.scale[2]}, &c)
+	a.sampleModel(p, &c)
 	if c.only != mixed {
 		return c.only
 	}

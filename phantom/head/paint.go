@@ -97,9 +97,11 @@ func (c *canvas) open(d float64) {
 
 // sample paints everything that may be at a point (mm, RAS+). It returns about
 // how far outside the head the point lies in mm, 0 within.
-func (a *anatomy) sample(world vec, c *canvas) float64 {
+func (a *anatomy) sample(world vec, c *canvas) float64 { return a.sampleModel(a.model(world), c) }
+
+// sampleModel is sample of a point of the unbent head.
+func (a *anatomy) sampleModel(p vec, c *canvas) float64 {
 	c.only = numTissues
-	p := vec{world[0] / a.scale[0], world[1] / a.scale[1], world[2] / a.scale[2]}
 	cavity := a.cavity.at(p)
 	inner := max(cavity, a.canal(p))
 	if inner < c.edge {
