@@ -13,8 +13,7 @@ type anatomy struct {
 	ventricle float64 // size of the ventricles, about 1
 	atrophy   float64 // 0 young .. 1 old: wider sulci and ventricles
 	bend      *bend
-	folds     *randomField // of the sulci that reach deep
-	dimples   *randomField // of shallow ones between them
+	folds     *randomField // whose zero sheets are the sulci
 	warpX     *randomField
 	warpY     *randomField
 	marbling  *randomField // fat between muscle fibres, air cells
@@ -22,8 +21,8 @@ type anatomy struct {
 
 	// Large smooth shapes, and the distance to the sheets of the sulci, are
 	// sampled once: at every point of a picture they would cost most of the time.
-	cavity, outline, fossa, cerebellum, deep, sulci, shallow *lattice
-	ventricles, stem, callosum                               *lattice // of the right side: their mirror images are the left
+	cavity, outline, fossa, cerebellum, deep, sulci *lattice
+	hemisphere, ventricles, stem, callosum          *lattice // of the right side: their mirror images are the left
 }
 
 // proportions draws those of a seed.
@@ -48,7 +47,7 @@ func newAnatomy(ctx context.Context, seed uint64, atrophy, edge float64) (*anato
 		stream       uint64
 		lo, hi, step float64
 	}{
-		{&a.folds, 21, 31, 35, 3.5}, {&a.dimples, 25, 25, 29, 3.5}, {&a.warpX, 22, 22, 60, 3.5}, {&a.warpY, 23, 22, 60, 3.5}, {&a.marbling, 24, 5, 12, 1.2},
+		{&a.folds, 21, foldMin, foldMax, 3.5}, {&a.warpX, 22, 22, 60, 3.5}, {&a.warpY, 23, 22, 60, 3.5}, {&a.marbling, 24, 5, 12, 1.2},
 	}
 	err := parallel(ctx, len(fields), func(i int) {
 		f := fields[i]
@@ -68,47 +67,19 @@ func newAnatomy(ctx context.Context, seed uint64, atrophy, edge float64) (*anato
 	a.stem = newLattice(vec{0, -62, -130}, vec{32, 12, 14}, 1.5*coarse)
 	a.callosum = newLattice(vec{0, -58, -12}, vec{40, 58, 50}, 1.5*coarse)
 	a.sulci = newLattice(vec{-76, -104, -50}, vec{76, 86, 86}, 1.75*coarse)
-	a.shallow = newLattice(a.sulci.lo, vec{76, 86, 86}, 1.75*coarse)
+	a.hemisphere = newLattice(vec{0, -104, -50}, vec{76, 86, 86}, 2.5*coarse)
 	for _, l := range []struct {
 		l *lattice
 		f func(vec) float64
 	}{
 		{a.fossa, a.posteriorFossaShape}, {a.cavity, a.cavityShape}, {a.outline, func(p vec) float64 { return a.outlineShape(p, a.cavity.at(p)) }},
-		{a.cerebellum, a.cerebellumShape}, {a.ventricles, a.ventriclesShape}, {a.stem, a.stemShape}, {a.callosum, a.callosumShape}, {a.deep, a.deepShape}, {a.sulci, func(p vec) float64 { return a.fold(p, a.folds) }}, {a.shallow, func(p vec) float64 { return a.fold(p, a.dimples) }},
+		{a.cerebellum, a.cerebellumShape}, {a.ventricles, a.ventriclesShape}, {a.stem, a.stemShape}, {a.callosum, a.callosumShape}, {a.deep, a.deepShape}, {a.hemisphere, a.hemisphereShape}, {a.sulci, a.fold},
 	} {
 		if err := l.l.fill(ctx, l.f); err != nil {
 			return nil, err
 		}
 	}
-	if err := a.shallow.signedDistance(ctx); err != nil {
-		return nil, err
-	}
 	return a, a.sulci.signedDistance(ctx)
-}
-
-// fold is the function whose zero surfaces are the sulci.
-func (a *anatomy) fold(p vec, f *randomField) float64 {
-	if a.cavity.at(p) < -4 {
-		return 1 // no brain there
-	}
-	// Depth is compressed, so that the sheets run inward from the surface instead
-	// of across it.
-	c := vec{0, -8, 8}
-	d := sub(p, c)
-	n := length(d) + 1e-9
-	depth := 78 - n
-	s := (78 - 0.35*depth) / n
-	q := vec{c[0] + d[0]*s, c[1] + d[1]*s, c[2] + d[2]*s}
-	const warp = 8.0
-	// Half the depth counts for the warp, so that sulci bend on their way.
-	w := vec{(p[0] + q[0]) / 2, (p[1] + q[1]) / 2, (p[2] + q[2]) / 2}
-	q[0] += warp * a.warpX.at(w)
-	q[1] += warp * a.warpY.at(w)
-	// The hemispheres fold differently.
-	if p[0] < 0 {
-		q[2] += 97
-	}
-	return f.at(q)
 }
 
 // cavityShape is the inside of the skull.
@@ -201,12 +172,18 @@ func (a *anatomy) deepShape(p vec) float64 {
 
 // fissure is the distance to the great fissures: between the hemispheres and
 // along the Sylvian fissure with the insula.
-func (a *anatomy) fissure(p vec) float64 {
+func (a *anatomy) fissure(p vec, surface, deep float64) float64 {
 	m := mirrored(p)
-	// Between the hemispheres, above and around the callosum.
-	d := math.Abs(p[0])
-	if in := a.deep.at(vec{0, p[1], p[2]}); in > 0 {
-		d = math.Hypot(d, in)
+	// Between the hemispheres, above and around the callosum. Below the falx the
+	// hemispheres touch along an uneven line.
+	d := m[0]
+	if d < 20 {
+		if free := min((surface-falxDepth(p))/8, (-deep-1)/6, 1); free > 0 {
+			d = math.Abs(p[0] - 1.6*free*a.warpX.at(vec{17, p[1], p[2]}))
+		}
+		if in := a.deep.at(vec{0, p[1], p[2]}); in > 0 {
+			d = math.Hypot(d, in)
+		}
 	}
 	// The Sylvian fissure: a sheet inward to the insula, and the sheet over it.
 	y, z := m[1], m[2]

@@ -2,9 +2,6 @@ package head
 
 import "math"
 
-// sulcusHalf is the half width of a sulcus at depth in mm.
-const sulcusHalf = 0.4
-
 // canvas collects the shares of one sampled point: each layer covers what lies
 // below it in proportion to how much of the sample it fills.
 type canvas struct {
@@ -255,8 +252,8 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	}
 	// Falx and tentorium.
 	// The sinus lies in the root of the falx.
-	if ends := min(cavity-5, -a.deep.at(p)-5); p[2] > -8 && ends > -c.edge {
-		c.cover(dura, c.slab(math.Abs(p[0]), 0.55)*min(ends/c.edge+0.5, 1))
+	if ends := min(cavity-5, falxDepth(p)-cavity, -a.deep.at(p)-5); p[2] > -8 && ends > -c.edge {
+		c.cover(dura, c.slab(math.Abs(p[0]), 0.5)*min(ends/c.edge+0.5, 1))
 	}
 	fossa := a.fossa.at(p)
 	if cavity > 1 && p[1] < -14 && p[2] > -30 {
@@ -285,39 +282,28 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 	m := mirrored(p)
 	deep := a.deep.at(p)
-	gap := a.fissure(p) // to the great fissures
-	crown := surface    // to the outer surface
-	sulcus := 40.0      // to the nearest sulcus
+	gap := a.fissure(p, surface, deep) // to the great fissures
+	sulcus := 40.0                     // to the nearest sulcus
 	if surface < 32 && deep < 8 {
-		sulcus = math.Abs(a.sulci.at(p))
-		deepest := sulcus
-		uneven := a.warpX.at(vec{p[1], p[2], p[0]})
-		// A sulcus ends about 8..24 mm below the surface and before the deep part.
-		if end := max(surface-14.5-4*uneven, deep+4); end > 0 {
-			sulcus = math.Hypot(sulcus, end)
-		}
-		if surface < 16 {
-			shallow := math.Abs(a.shallow.at(p))
-			// It keeps clear of the sulci that reach deep.
-			if end := max(surface-7-2*uneven, deep+4, 7.5-deepest); end > 0 {
-				shallow = math.Hypot(shallow, end)
-			}
-			sulcus = min(sulcus, shallow)
-		}
+		sulcus = a.sulcus(p, surface, deep)
 	}
-	widen := 0.4*max(0, 1-surface/6) + 0.5*a.atrophy // open toward the surface
-	pia := min(crown, sulcus-sulcusHalf-widen, gap-0.55)
+	// Sulci open toward the surface, and the crowns between them are round.
+	open := opening * square(max(0, 1-sulcus/openingReach))
+	crown := surface - open
+	widen := 0.4*max(0, 1-surface/6) + 0.5*a.atrophy
+	gap -= 0.6 * open
+	pia := min(meet(crown, sulcus-sulcusHalf-widen, 4), gap-gapHalf)
 	// Sulci are thinner than most voxels: fluid fills of the brain what their
 	// sheets fill of the voxel.
-	inside := min(surface/c.edge+0.5, 1)
-	fluid := max(c.slab(sulcus, sulcusHalf+widen), c.slab(gap, 0.55))
+	inside := min(crown/c.edge+0.5, 1)
+	fluid := max(c.slab(sulcus, sulcusHalf+widen), c.slab(gap, gapHalf))
 	if inside > 0 {
 		if fluid > 0 {
 			c.cover(csf, inside)
 		}
 		c.cover(cortex, inside*(1-fluid))
 	}
-	cortexThick := 2.7
+	cortexThick := 2.8
 	white := pia - cortexThick
 	c.within(whiteMatter, white, cortex)
 	if deep > -2 {
