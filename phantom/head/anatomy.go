@@ -125,7 +125,7 @@ func (a *anatomy) stemShape(p vec) float64 {
 // cerebellumShape is its outer surface, folia not cut.
 func (a *anatomy) cerebellumShape(p vec) float64 {
 	m := mirrored(p)
-	return join(ellipsoid(m, vec{20, -56, -32}, vec{34, 37, 29}), ellipsoid(p, vec{0, -56, -28}, vec{16, 30, 28}), 6)
+	return join(ellipsoid(m, vec{20, -56, -32}, vec{36, 37, 31}), ellipsoid(p, vec{0, -56, -28}, vec{18, 31, 31}), 6)
 }
 
 // folia is the distance to the nearest fissure of the cerebellum.
@@ -151,11 +151,13 @@ func (a *anatomy) ventriclesShape(p vec) float64 {
 		return -12
 	}
 	lateral := tube(m,
-		node{vec{10, 34, 10}, 3.2 * s}, node{vec{9, 22, 19}, 5.2 * s}, node{vec{9.5, 2, 24}, 5.0 * s},
-		node{vec{13, -20, 23}, 5.2 * s}, node{vec{23, -37, 14}, 6.8 * s}, node{vec{31, -26, -2}, 4 * s}, node{vec{30, -4, -16}, 2.5 * s})
-	occipital := tube(m, node{vec{23, -38, 13}, 6 * s}, node{vec{22, -62, 9}, 2.2 * s})
+		node{vec{10, 34, 10}, 3.0 * s}, node{vec{7.5, 22, 18}, 5.0 * s}, node{vec{7.5, 2, 23.5}, 4.8 * s},
+		node{vec{11, -20, 23}, 4.8 * s}, node{vec{22, -37, 14}, 6.0 * s}, node{vec{31, -26, -2}, 3.5 * s}, node{vec{30, -4, -16}, 2.2 * s})
+	occipital := tube(m, node{vec{22, -38, 13}, 5.2 * s}, node{vec{22, -58, 9}, 1.8 * s})
 	third := ellipsoid(p, vec{0, -6, 3}, vec{2.6 * s, 13, 9})
-	return max(join(lateral, occipital, 3), third)
+	// Their bodies meet below the callosum and above the fornix.
+	body := meet(meet(ellipsoid(p, vec{0, 2, 14}, vec{5.5, 34, 19}), -a.callosumShape(p)-0.3, 2), p[2]-8-0.31*(28-p[1]), 4)
+	return max(join(join(lateral, occipital, 3), body, 3), third)
 }
 
 // callosumShape arches over the ventricles from side to side.
@@ -167,19 +169,21 @@ func (a *anatomy) callosumShape(p vec) float64 {
 // deepShape is the part of the hemispheres that no sulcus reaches.
 func (a *anatomy) deepShape(p vec) float64 {
 	m := mirrored(p)
-	return join(ellipsoid(m, vec{16, -2, 9}, vec{20, 38, 21}), a.callosumShape(p), 4)
+	middle := ellipsoid(p, vec{0, 3, 12}, vec{14, 32, 18})
+	return join(join(ellipsoid(m, vec{16, -2, 9}, vec{20, 38, 21}), middle, 4), a.callosumShape(p), 4)
 }
 
-// fissure is the distance to the great fissures: between the hemispheres and
-// along the Sylvian fissure with the insula.
-func (a *anatomy) fissure(p vec, surface, deep float64) float64 {
+// fissure is the distance to the great fissures and their half width: between
+// the hemispheres, and along the Sylvian fissure with the insula.
+func (a *anatomy) fissure(p vec, surface, deep float64) (d, half float64) {
 	m := mirrored(p)
 	// Between the hemispheres, above and around the callosum. Below the falx the
 	// hemispheres touch along an uneven line.
-	d := m[0]
+	d, half = m[0], gapHalf
 	if d < 20 {
 		if free := min((surface-falxDepth(p))/8, (-deep-1)/6, 1); free > 0 {
-			d = math.Abs(p[0] - 1.6*free*a.warpX.at(vec{17, p[1], p[2]}))
+			d = math.Abs(p[0] - 2*free*a.warpX.at(vec{17, p[1], p[2]}))
+			half -= 0.2 * free
 		}
 		if in := a.deep.at(vec{0, p[1], p[2]}); in > 0 {
 			d = math.Hypot(d, in)
@@ -191,7 +195,10 @@ func (a *anatomy) fissure(p vec, surface, deep float64) float64 {
 	outward := max(40-m[0], 0, y-26, -26-y)
 	inlet := math.Hypot(z-slope, outward)
 	insula := math.Hypot(m[0]-39+0.012*(y-2)*(y-2)-0.02*(z-0.4*slope)*(z-0.4*slope)-1.5*a.warpY.at(p), max(math.Abs(z-0.4*slope)-11, 0, y-22, -16-y))
-	return min(d, inlet, insula)
+	if sylvian := min(inlet, insula); sylvian < d {
+		return sylvian, sylvianHalf
+	}
+	return d, half
 }
 
 // outlineShape is the skin.
@@ -209,6 +216,6 @@ func (a *anatomy) outlineShape(p vec, cavity float64) float64 {
 	d = join(join(d, nose, 8), join(nostril, lips, 4), 8)
 	d = join(join(d, brow, 10), neck, 24)
 	// The sockets are hollows beside the nose.
-	d = min(d, -ellipsoid(m, vec{34, 102, -24}, vec{18, 16, 11}))
+	d = meet(d, -ellipsoid(m, vec{34, 102, -23}, vec{18, 16, 13}), 9)
 	return join(d, ear, 5)
 }

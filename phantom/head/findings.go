@@ -178,7 +178,7 @@ func newLesion(q request, r *rand.Rand, a *anatomy) (lesion, error) {
 		dir = sub(q.at, vec{0, -8, 14})
 	}
 	n := length(dir)
-	if q.placed && n < 1 {
+	if q.placed && n < 10 {
 		return nil, fmt.Errorf("its place is the middle of the head: want one near the skull")
 	}
 	for s := 20.0; s < 120; s += 0.25 {

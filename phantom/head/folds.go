@@ -13,9 +13,10 @@ const (
 	outerVary    = 5    // and its standard deviation
 	innerDepth   = 9
 	innerVary    = 2.5
-	gapHalf      = 0.45 // half width of the fissure between the hemispheres
-	opening      = 2.2  // how far crowns fall off toward a sulcus
-	openingReach = 5.0  // and over what distance
+	gapHalf      = 0.4 // half width of the fissure between the hemispheres
+	sylvianHalf  = 0.6
+	opening      = 2.2 // how far crowns fall off toward a sulcus
+	openingReach = 5.0 // and over what distance
 )
 
 // hemisphereShape is the depth in mm below the surface of a hemisphere without

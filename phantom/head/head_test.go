@@ -52,7 +52,7 @@ var landmarks = map[string]maps.Vec{
 	"white matter internal capsule right": {17, -5, 13}, "white matter genu": {0, 38, 16}, "white matter splenium": {0, -37, 21},
 	"brain stem pons": {0, -17, -26}, "brain stem medulla": {0, -26, -48}, "brain stem cord": {0, -40, -110},
 	"red nucleus right": {5, -17.5, -5.5}, "red nucleus left": {-5, -17.5, -5.5},
-	"cortical bone clivus": {0, 8, -27.5}, "fat orbit": {38, 50, -26}, "muscle tongue": {8, 52, -82},
+	"cortical bone clivus": {0, 8, -27.5}, "fat orbit": {38, 58, -27}, "muscle tongue": {8, 52, -82},
 	"venous blood sagittal sinus": {0, -93.5, 20}, "arterial blood carotid right": {12, 20, -28},
 	"air maxillary sinus": {27, 54, -46}, "air in front": {0, 122, 0},
 }

@@ -145,7 +145,7 @@ func (a *anatomy) soft(p vec, c *canvas, outline, cavity float64) {
 // bones paints skull, jaws and spine.
 func (a *anatomy) bones(p vec, c *canvas, cavity float64) {
 	m := mirrored(p)
-	thick := 7.2 + 1.2*a.warpX.at(vec{p[0] / 2, p[1] / 2, p[2] / 2})
+	thick := 7.2 + 0.8*a.warpX.at(vec{p[0] / 2, p[1] / 2, p[2] / 2})
 	if p[2] > -62 && -p[2] < 62 {
 		c.paint(bone, cavity+thick)
 		if p[2] > -30 {
@@ -190,15 +190,15 @@ func (a *anatomy) jaws(p, m vec, c *canvas) {
 	cheekbone := cheekbonePipe.near(m)
 	c.paint(bone, cheekbone)
 	c.paint(marrow, cheekbone-2.5)
-	c.paint(bone, blob(p, vec{0, 84, -14}, vec{30, 9, 12}))
+	c.paint(bone, blob(p, vec{0, 84, -10}, vec{26, 7, 10}))
 }
 
 // face paints the eyes and the airways.
 func (a *anatomy) face(p vec, c *canvas) {
 	m := mirrored(p)
-	orbit := blob(m, vec{30, 60, -20}, vec{19, 36, 18})
-	c.paint(bone, orbit+1.6)
-	c.paint(fat, orbit)
+	orbit := orbitPipe.near(m)
+	c.paint(bone, min(orbit+1.6, 73-p[1]))
+	c.paint(fat, min(orbit, 78-p[1]))
 	if orbit <= -clearance {
 		a.airways(p, m, c)
 		return
@@ -253,7 +253,7 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	// Falx and tentorium.
 	// The sinus lies in the root of the falx.
 	if ends := min(cavity-5, falxDepth(p)-cavity, -a.deep.at(p)-5); p[2] > -8 && ends > -c.edge {
-		c.cover(dura, c.slab(math.Abs(p[0]), 0.5)*min(ends/c.edge+0.5, 1))
+		c.cover(dura, c.slab(math.Abs(p[0]), 0.4)*min(ends/c.edge+0.5, 1))
 	}
 	fossa := a.fossa.at(p)
 	if cavity > 1 && p[1] < -14 && p[2] > -30 {
@@ -262,6 +262,7 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	if cerebellum := min(a.cerebellum.at(p), fossa-1.6); cerebellum > -c.edge {
 		a.paintCerebellum(p, c, cerebellum)
 	}
+	c.paint(whiteMatter, peduncle.near(m))
 	stem := a.stem.at(mirrored(p))
 	c.paint(brainStem, stem)
 	if p[2] < 4 && p[2] > -42 && p[1] < 0 {
@@ -282,8 +283,8 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 	m := mirrored(p)
 	deep := a.deep.at(p)
-	gap := a.fissure(p, surface, deep) // to the great fissures
-	sulcus := 40.0                     // to the nearest sulcus
+	gap, gapHalf := a.fissure(p, surface, deep)
+	sulcus := 40.0 // to the nearest sulcus
 	if surface < 32 && deep < 8 {
 		sulcus = a.sulcus(p, surface, deep)
 	}
@@ -312,17 +313,25 @@ func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 	c.paint(whiteMatter, min(a.callosum.at(m), surface))
 	// Deep grey matter, iron-rich parts last.
 	c.paint(caudate, caudatePipe.near(m))
-	c.paint(putamen, blob(m, vec{27, 6, 3}, vec{6, 19, 12}))
-	c.paint(pallidum, blob(m, vec{20.5, 3, 1.5}, vec{4.2, 11, 8.5}))
-	c.paint(thalamus, blob(m, vec{10.5, -14, 8}, vec{8.5, 15, 10}))
+	// Putamen and pallidum make a wedge with its edge toward the middle, along
+	// which the internal capsule bends.
+	if lentiform := min(blob(m, vec{31, 3, 3}, vec{14, 20, 12}), 32.5-0.008*square(p[1]-3)-m[0]); lentiform > -clearance {
+		c.paint(putamen, lentiform)
+		c.within(pallidum, min(lentiform-0.3, 24-0.004*square(p[1]-3)-m[0]), putamen)
+	}
+	c.paint(thalamus, blob(m, vec{9.5, -15, 8}, vec{7.8, 14.5, 9.5}))
 	c.paint(cortex, hippocampusPipe.near(m)) // hippocampus
-	c.paint(csf, a.ventricles.at(m))
+	ventricle := a.ventricles.at(m)
+	c.paint(csf, ventricle)
+	if p[1] > -16 && p[2] > 13-0.2*p[1] { // the septum
+		c.cover(whiteMatter, c.slab(m[0], 0.7)*min(ventricle/c.edge+0.5, 1))
+	}
 	if p[2] > 14 || p[2] < -50 {
 		return
 	}
 	stem := a.stem.at(mirrored(p))
 	// Cisterns about the midbrain and above the sella.
-	c.paint(csf, meet(min(4.5-math.Abs(stem+3.5), surface+6), -p[2], 8))
+	c.paint(csf, meet(min(2.6-math.Abs(stem+1.8), surface+6), -p[2], 6))
 	c.paint(csf, meet(blob(p, vec{0, 6, -11}, vec{12, 10, 6}), 9-math.Abs(p[0])-0.4*math.Abs(p[1]-6), 5))
 }
 
@@ -343,10 +352,10 @@ func (a *anatomy) vessels(p vec, c *canvas, cavity float64) {
 	m := mirrored(p)
 	// The superior sagittal sinus is a wedge under the vault.
 	if p[2] > 5 || p[1] < -60 {
-		c.paint(venousBlood, min(4.2-0.55*cavity-math.Abs(p[0]), cavity-0.3))
+		c.paint(venousBlood, min(3.2-0.015*p[1]-0.55*cavity-math.Abs(p[0]), cavity-0.3))
 	}
-	transverse := min(3.6-math.Abs(p[2]+16+0.02*m[0]), 5-cavity, cavity-0.4, -40-p[1])
-	c.paint(venousBlood, transverse)
+	transverse := min(3.4-math.Abs(p[2]+12+0.25*m[0]), 4.5-cavity, cavity-0.4, -44-p[1])
+	c.paint(venousBlood, max(transverse, min(sigmoidPipe.near(m), cavity-0.4)))
 	for _, artery := range []float64{basilarPipe.near(p), carotidPipe.near(m), anteriorPipe.near(m)} {
 		if p[2] > -20 {
 			c.paint(csf, artery+1.6) // the cisterns that they run in
