@@ -108,9 +108,15 @@ func (a *anatomy) canal(p vec) float64 {
 }
 
 // cerebrum is the outer surface of the hemispheres, sulci not cut.
-func (a *anatomy) cerebrum(p vec, cavity float64) float64 {
+func (a *anatomy) cerebrum(p vec, cavity, fossa float64) float64 {
 	// Fluid over the hemispheres is thicker above than at the base.
-	return min(cavity-1.2-0.8*min(max((p[2]+5)/25, 0), 1), -a.fossa.at(p)-1.2)
+	return min(cavity-1.2-0.8*min(max((p[2]+5)/25, 0), 1), -fossa-1.2)
+}
+
+// below is the depth in mm within the posterior fossa: its lattice, and beyond
+// it less the distance to it.
+func (a *anatomy) below(p vec) float64 {
+	return a.fossa.at(p) - max(p[2]-8, 0) - max(p[1]-10, 0)
 }
 
 // stemShape is midbrain, pons, medulla and cord.
@@ -133,7 +139,7 @@ func (a *anatomy) folia(p vec) float64 {
 	y, z := p[1]+34, p[2]+28
 	r := math.Hypot(y, z)
 	angle := math.Atan2(z, -y) + 0.10*a.warpX.at(p)
-	const fissures = 13
+	const fissures = 15
 	cell := angle * fissures / math.Pi
 	return math.Abs(cell-math.Round(cell)) * math.Pi / fissures * max(r, 4)
 }

@@ -9,9 +9,9 @@ const (
 	foldWarp     = 8.0
 	foldDepth    = 0.35 // share of the depth that counts for the field
 	sulcusHalf   = 0.4  // half width of a sulcus at depth
-	outerDepth   = 17   // mean depth of the sulci of the outer surface
-	outerVary    = 5    // and its standard deviation
-	innerDepth   = 9
+	outerDepth   = 17.5 // mean depth of the sulci of the outer surface
+	outerVary    = 6.5  // and its standard deviation
+	innerDepth   = 11.5
 	innerVary    = 2.5
 	gapHalf      = 0.4 // half width of the fissure between the hemispheres
 	sylvianHalf  = 0.6
@@ -23,7 +23,7 @@ const (
 // sulci, midline and base included, with soft edges: sheets that follow its
 // gradient run inward everywhere.
 func (a *anatomy) hemisphereShape(m vec) float64 {
-	return meet(meet(a.cavity.at(m)-1.5, m[0], 26), -a.fossa.at(m)-1, 18)
+	return meet(meet(a.cavity.at(m)-1.5, m[0], 26), -a.below(m)-1, 18)
 }
 
 // fold is the function whose zero surfaces are the sulci.
@@ -61,14 +61,13 @@ func (a *anatomy) fold(p vec) float64 {
 
 // sulcus is the distance from p to the nearest sulcus in mm. A sulcus ends some
 // way below the surface and before the deep part.
-func (a *anatomy) sulcus(p vec, surface, deep float64) float64 {
-	m := mirrored(p)
+func (a *anatomy) sulcus(p, m vec, surface, fossa, deep float64) float64 {
 	depth := min(surface, max(m[0], a.hemisphere.at(m)+1))
 	uneven := a.warpX.at(vec{p[1], p[2], p[0]})
 	// Those of the outer surface are deep, those of the medial wall and the base
 	// shallow.
-	outer := min(max((min(m[0], -a.fossa.at(p))-surface)/16+0.4, 0), 1)
-	bottom := outer*min(max(outerDepth+outerVary*uneven, 10), 28) + (1-outer)*min(max(innerDepth+innerVary*uneven, 5), 14)
+	outer := min(max((min(m[0], -fossa)-surface)/16+0.4, 0), 1)
+	bottom := outer*min(max(outerDepth+outerVary*uneven, 8), 28) + (1-outer)*min(max(innerDepth+innerVary*uneven, 5), 16)
 	return math.Hypot(a.sulci.at(p), max(depth-bottom, deep+4, 0))
 }
 

@@ -132,7 +132,7 @@ func (a *anatomy) soft(p vec, c *canvas, outline, cavity float64) {
 	// Muscles of the neck, the temples and the face, with fat between them.
 	// Seams of fat part the bellies of the muscles.
 	seam := 9*math.Abs(a.warpX.at(p)) - 0.9
-	neck := min(outline-6-1.5*grain, -30-p[2]-0.4*p[1], seam)
+	neck := min(outline-6-0.5*grain, -30-p[2]-0.4*p[1], seam)
 	temple := min(outline-4, blob(m, vec{68, 28, -8}, vec{13, 30, 36}))
 	cheek := min(outline-7, blob(m, vec{46, 34, -66}, vec{14, 24, 34}))
 	tongue := blob(p, vec{0, 54, -80}, vec{24, 30, 19})
@@ -246,24 +246,37 @@ func (a *anatomy) airways(p, m vec, c *canvas) {
 // brain paints everything within the dura.
 func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	m := mirrored(p)
-	cerebrum := a.cerebrum(p, cavity)
-	if cerebrum > -c.edge {
-		a.hemispheres(p, c, cerebrum)
+	fossa := a.below(p)
+	if cerebrum := a.cerebrum(p, cavity, fossa); cerebrum > -c.edge {
+		a.hemispheres(p, m, c, cerebrum, fossa)
 	}
-	// Falx and tentorium.
-	// The sinus lies in the root of the falx.
-	if ends := min(cavity-5, falxDepth(p)-cavity, -a.deep.at(p)-5); p[2] > -8 && ends > -c.edge {
-		c.cover(dura, c.slab(math.Abs(p[0]), 0.4)*min(ends/c.edge+0.5, 1))
+	// The falx, in whose root the sinus lies, and the tentorium.
+	if m[0] < 1+c.edge && p[2] > -8 {
+		ends := min(cavity-5, falxDepth(p)-cavity, -a.deep.at(p)-5)
+		c.cover(dura, c.slab(m[0], 0.4)*min(ends/c.edge+0.5, 1))
 	}
-	fossa := a.fossa.at(p)
-	if cavity > 1 && p[1] < -14 && p[2] > -30 {
-		c.cover(dura, c.slab(math.Abs(fossa+0.6), 0.6)*min((m[0]-7)/c.edge+0.5, 1))
+	if fossa > -2-c.edge {
+		if cavity > 1 && p[1] < -14 && p[2] > -30 {
+			c.cover(dura, c.slab(math.Abs(fossa+0.6), 0.6)*min((m[0]-7)/c.edge+0.5, 1))
+		}
+		if cerebellum := min(a.cerebellum.at(p), fossa-1.6); cerebellum > -c.edge {
+			a.paintCerebellum(p, c, cerebellum)
+		}
 	}
-	if cerebellum := min(a.cerebellum.at(p), fossa-1.6); cerebellum > -c.edge {
-		a.paintCerebellum(p, c, cerebellum)
+	if p[2] < 14 && p[1] < 12 && p[1] > -62 && m[0] < 32 {
+		a.brainstem(p, m, c)
 	}
+	a.vessels(p, c, cavity)
+	for _, l := range a.lesions {
+		l.paint(a, p, c)
+	}
+}
+
+// brainstem paints the stem with its nuclei, the way to the cerebellum and what
+// lies there, and the fourth ventricle.
+func (a *anatomy) brainstem(p, m vec, c *canvas) {
 	c.paint(whiteMatter, peduncle.near(m))
-	stem := a.stem.at(mirrored(p))
+	stem := a.stem.at(m)
 	c.paint(brainStem, stem)
 	if p[2] < 4 && p[2] > -42 && p[1] < 0 {
 		c.paint(substantiaNigra, min(substantiaPipe.near(m), stem-1.2))
@@ -271,22 +284,19 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 		dentateShell := blob(m, vec{15, -58, -33}, vec{7, 9, 5.5})
 		c.paint(dentate, min(dentateShell, 1.8-dentateShell)) // a folded sheet, open inside
 	}
-	c.paint(csf, a.fourthVentricle(p))
-	a.vessels(p, c, cavity)
-	for _, l := range a.lesions {
-		l.paint(a, p, c)
+	if m[0] < 10 && p[2] < 6 {
+		c.paint(csf, a.fourthVentricle(p))
 	}
 }
 
 // hemispheres paints the cerebrum: folded cortex over white matter, with what
 // lies deep in it.
-func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
-	m := mirrored(p)
+func (a *anatomy) hemispheres(p, m vec, c *canvas, surface, fossa float64) {
 	deep := a.deep.at(p)
 	gap, gapHalf := a.fissure(p, surface, deep)
 	sulcus := 40.0 // to the nearest sulcus
 	if surface < 32 && deep < 8 {
-		sulcus = a.sulcus(p, surface, deep)
+		sulcus = a.sulcus(p, m, surface, fossa, deep)
 	}
 	// Sulci open toward the surface, and the crowns between them are round.
 	open := opening * square(max(0, 1-sulcus/openingReach))
@@ -310,6 +320,20 @@ func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 	if deep > -2 {
 		c.paint(whiteMatter, min(deep, gap-1.2))
 	}
+	if m[0] < 54 && p[2] > -36 && p[2] < 50 && p[1] > -84 && p[1] < 60 {
+		a.core(p, m, c, surface)
+	}
+	if p[2] > 14 || p[2] < -50 || m[0] > 32 || p[1] > 20 || p[1] < -62 {
+		return
+	}
+	stem := a.stem.at(m)
+	// Cisterns about the midbrain and above the sella.
+	c.paint(csf, meet(min(2.6-math.Abs(stem+1.8), surface+6), -p[2], 6))
+	c.paint(csf, meet(blob(p, vec{0, 6, -11}, vec{12, 10, 6}), 9-math.Abs(p[0])-0.4*math.Abs(p[1]-6), 5))
+}
+
+// core paints what lies deep in the hemispheres.
+func (a *anatomy) core(p, m vec, c *canvas, surface float64) {
 	c.paint(whiteMatter, min(a.callosum.at(m), surface))
 	// Deep grey matter, iron-rich parts last.
 	c.paint(caudate, caudatePipe.near(m))
@@ -326,20 +350,13 @@ func (a *anatomy) hemispheres(p vec, c *canvas, surface float64) {
 	if p[1] > -16 && p[2] > 13-0.2*p[1] { // the septum
 		c.cover(whiteMatter, c.slab(m[0], 0.7)*min(ventricle/c.edge+0.5, 1))
 	}
-	if p[2] > 14 || p[2] < -50 {
-		return
-	}
-	stem := a.stem.at(mirrored(p))
-	// Cisterns about the midbrain and above the sella.
-	c.paint(csf, meet(min(2.6-math.Abs(stem+1.8), surface+6), -p[2], 6))
-	c.paint(csf, meet(blob(p, vec{0, 6, -11}, vec{12, 10, 6}), 9-math.Abs(p[0])-0.4*math.Abs(p[1]-6), 5))
 }
 
 // paintCerebellum paints its leaves.
 func (a *anatomy) paintCerebellum(p vec, c *canvas, surface float64) {
 	fissure := a.folia(p)
-	if surface > 14 {
-		fissure = math.Hypot(fissure, surface-14)
+	if surface > 17 {
+		fissure = math.Hypot(fissure, surface-17)
 	}
 	pia := min(surface, fissure-0.35)
 	c.paint(cortex, surface)
@@ -354,11 +371,16 @@ func (a *anatomy) vessels(p vec, c *canvas, cavity float64) {
 	if p[2] > 5 || p[1] < -60 {
 		c.paint(venousBlood, min(3.2-0.015*p[1]-0.55*cavity-math.Abs(p[0]), cavity-0.3))
 	}
-	transverse := min(3.4-math.Abs(p[2]+12+0.25*m[0]), 4.5-cavity, cavity-0.4, -44-p[1])
-	c.paint(venousBlood, max(transverse, min(sigmoidPipe.near(m), cavity-0.4)))
+	if p[2] < 0 && p[1] < -8 {
+		transverse := min(3.4-math.Abs(p[2]+12+0.25*m[0]), 4.5-cavity, cavity-0.4, -44-p[1])
+		c.paint(venousBlood, max(transverse, min(sigmoidPipe.near(m), cavity-0.4)))
+	}
+	if p[2] > 38 || m[0] > 46 || p[1] < -10 {
+		return // no large artery
+	}
 	for _, artery := range []float64{basilarPipe.near(p), carotidPipe.near(m), anteriorPipe.near(m)} {
-		if p[2] > -20 {
-			c.paint(csf, artery+1.6) // the cisterns that they run in
+		if p[2] > -20 && p[2] < -3 {
+			c.paint(csf, artery+1.4) // the cisterns that they run in
 		}
 		c.paint(arterialBlood, artery)
 	}
