@@ -137,7 +137,7 @@ func (a *anatomy) cerebellumShape(p vec) float64 {
 // folia is the distance to the nearest fissure of the cerebellum.
 func (a *anatomy) folia(p vec) float64 {
 	y, z := p[1]+34, p[2]+28
-	r := math.Hypot(y, z)
+	r := hypot(y, z)
 	angle := math.Atan2(z, -y) + 0.10*a.warpX.at(p)
 	const fissures = 15
 	cell := angle * fissures / math.Pi
@@ -192,15 +192,15 @@ func (a *anatomy) fissure(p vec, surface, deep float64) (d, half float64) {
 			half -= 0.2 * free
 		}
 		if in := a.deep.at(vec{0, p[1], p[2]}); in > 0 {
-			d = math.Hypot(d, in)
+			d = hypot(d, in)
 		}
 	}
 	// The Sylvian fissure: a sheet inward to the insula, and the sheet over it.
 	y, z := m[1], m[2]
 	slope := -1 + 0.42*(6-y) + 2.5*a.warpX.at(p)
 	outward := max(40-m[0], 0, y-26, -26-y)
-	inlet := math.Hypot(z-slope, outward)
-	insula := math.Hypot(m[0]-39+0.012*(y-2)*(y-2)-0.02*(z-0.4*slope)*(z-0.4*slope)-1.5*a.warpY.at(p), max(math.Abs(z-0.4*slope)-11, 0, y-22, -16-y))
+	inlet := hypot(z-slope, outward)
+	insula := hypot(m[0]-39+0.012*(y-2)*(y-2)-0.02*(z-0.4*slope)*(z-0.4*slope)-1.5*a.warpY.at(p), max(math.Abs(z-0.4*slope)-11, 0, y-22, -16-y))
 	if sylvian := min(inlet, insula); sylvian < d {
 		return sylvian, sylvianHalf
 	}

@@ -68,7 +68,7 @@ func (a *anatomy) sulcus(p, m vec, surface, fossa, deep float64) float64 {
 	// shallow.
 	outer := min(max((min(m[0], -fossa)-surface)/16+0.4, 0), 1)
 	bottom := outer*min(max(outerDepth+outerVary*uneven, 8), 28) + (1-outer)*min(max(innerDepth+innerVary*uneven, 5), 16)
-	return math.Hypot(a.sulci.at(p), max(depth-bottom, deep+4, 0))
+	return hypot(a.sulci.at(p), max(depth-bottom, deep+4, 0))
 }
 
 // falxDepth is how far the falx hangs down from the vault in mm: a sickle, wide

@@ -69,6 +69,9 @@ func checkLandmarks(t *testing.T, seed uint64, m *maps.Mixture) {
 
 // Findings are on the side and of the size they are said to be.
 func TestFindings(t *testing.T) {
+	if testing.Short() {
+		t.Skip("several heads")
+	}
 	plain := build(t, Spec{Voxel: cube(2)})
 	for _, n := range []string{"acute infarct, day 1", "mass", "plaque", "lacune", "oedema"} {
 		if v := plain.Set.Mixture.Volumes()[plain.Set.Mixture.Tissue(n)]; v != 0 {
@@ -178,6 +181,9 @@ func BenchmarkBuild(b *testing.B) {
 // A finding goes where it is told, and nowhere outside the brain; its label
 // image counts its volume.
 func TestPlacedFindings(t *testing.T) {
+	if testing.Short() {
+		t.Skip("several heads")
+	}
 	h := build(t, Spec{Voxel: cube(2), Findings: []string{"mass at -28 -40 35 mm", "micro-bleeds"}})
 	f := h.Findings[0]
 	for a, want := range []float64{-28, -40, 35} {
@@ -219,6 +225,9 @@ func TestPlacedFindings(t *testing.T) {
 
 // Atrophy widens sulci and ventricles.
 func TestAtrophy(t *testing.T) {
+	if testing.Short() {
+		t.Skip("several heads")
+	}
 	young := build(t, Spec{Voxel: cube(2)}).Set.Mixture.Volumes()
 	old := build(t, Spec{Voxel: cube(2), Atrophy: 1}).Set.Mixture.Volumes()
 	if q := old[csf] / young[csf]; q < 1.1 || q > 1.8 {

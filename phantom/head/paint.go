@@ -295,7 +295,7 @@ func (a *anatomy) hemispheres(p, m vec, c *canvas, surface, fossa float64) {
 	deep := a.deep.at(p)
 	gap, gapHalf := a.fissure(p, surface, deep)
 	sulcus := 40.0 // to the nearest sulcus
-	if surface < 32 && deep < 8 {
+	if min(surface, m[0]) < 32 && deep < 8 {
 		sulcus = a.sulcus(p, m, surface, fossa, deep)
 	}
 	// Sulci open toward the surface, and the crowns between them are round.
@@ -303,7 +303,7 @@ func (a *anatomy) hemispheres(p, m vec, c *canvas, surface, fossa float64) {
 	crown := surface - open
 	widen := 0.4*max(0, 1-surface/6) + 0.5*a.atrophy
 	gap -= 0.6 * open
-	pia := min(meet(crown, sulcus-sulcusHalf-widen, 4), gap-gapHalf)
+	pia := min(meet(crown, sulcus-sulcusHalf-widen, 3), gap-gapHalf)
 	// Sulci are thinner than most voxels: fluid fills of the brain what their
 	// sheets fill of the voxel.
 	inside := min(crown/c.edge+0.5, 1)
@@ -314,7 +314,7 @@ func (a *anatomy) hemispheres(p, m vec, c *canvas, surface, fossa float64) {
 		}
 		c.cover(cortex, inside*(1-fluid))
 	}
-	cortexThick := 2.8
+	cortexThick := 2.7
 	white := pia - cortexThick
 	c.within(whiteMatter, white, cortex)
 	if deep > -2 {
@@ -356,7 +356,7 @@ func (a *anatomy) core(p, m vec, c *canvas, surface float64) {
 func (a *anatomy) paintCerebellum(p vec, c *canvas, surface float64) {
 	fissure := a.folia(p)
 	if surface > 17 {
-		fissure = math.Hypot(fissure, surface-17)
+		fissure = hypot(fissure, surface-17)
 	}
 	pia := min(surface, fissure-0.35)
 	c.paint(cortex, surface)

@@ -9,6 +9,9 @@ type vec = [3]float64
 
 func sub(a, b vec) vec { return vec{a[0] - b[0], a[1] - b[1], a[2] - b[2]} }
 
+// hypot is that of moderate numbers, for speed.
+func hypot(a, b float64) float64 { return math.Sqrt(a*a + b*b) }
+
 func length(a vec) float64 { return math.Sqrt(a[0]*a[0] + a[1]*a[1] + a[2]*a[2]) }
 
 // ellipsoid has its centre at c and half axes r.

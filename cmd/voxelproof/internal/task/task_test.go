@@ -129,7 +129,7 @@ scans:
 // line.
 var golden = map[string]string{
 	"1": "9e9c58605274e0ec73061983e19c3dfaafdb59d717a0db66c9d6a72bee8c130e",
-	"2": "fae8c62947c859701eefd2b7e124df22628f0ab3346ef1ac08977135b0446572",
+	"2": "cdc17d468746efd89d60fdb950463d93e6995a0f0ce41c6214d13da2e146a2bf",
 }
 
 func TestGoldenFiles(t *testing.T) {
