@@ -104,7 +104,7 @@ func (a *anatomy) canal(p vec) float64 {
 	if p[2] > -18 {
 		return -reach
 	}
-	return canalPipe.at(p)
+	return canalPipe.near(p)
 }
 
 // cerebrum is the outer surface of the hemispheres, sulci not cut.

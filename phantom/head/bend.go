@@ -60,33 +60,53 @@ func newBend(seed uint64) *bend {
 	return b
 }
 
-// at is the displacement at p mm, by trilinear interpolation.
-func (b *bend) at(p vec) vec {
+// row is the displacement along a line parallel to the x axis.
+type row struct {
+	y, z float64
+	v    [][3]float32 // at the lattice points in x; empty = no line yet
+}
+
+// along makes r the line through p.
+func (b *bend) along(p vec, r *row) {
+	if len(r.v) > 0 && r.y == p[1] && r.z == p[2] {
+		return
+	}
 	var i [3]int
 	var t [3]float32
-	for a := range 3 {
+	for a := 1; a < 3; a++ {
 		x := min(max((p[a]-b.lo[a])/bendStep, 0), float64(b.size[a]-1)-1e-6)
 		i[a] = int(x)
 		t[a] = float32(x - float64(i[a]))
 	}
-	n := (i[2]*b.size[1]+i[1])*b.size[0] + i[0]
+	n := (i[2]*b.size[1] + i[1]) * b.size[0]
 	dy, dz := b.size[0], b.size[0]*b.size[1]
-	var out vec
-	for a := range 3 {
-		mix := func(n int) float32 { return b.v[n][a] + float32(t[0]*(b.v[n+1][a]-b.v[n][a])) }
-		near, far := mix(n), mix(n+dz)
-		near += float32(t[1] * (mix(n+dy) - near))
-		far += float32(t[1] * (mix(n+dz+dy) - far))
-		out[a] = float64(near + float32(t[2]*(far-near)))
+	r.y, r.z, r.v = p[1], p[2], append(r.v[:0], b.v[n:n+dy]...)
+	for x := range r.v {
+		for a := range 3 {
+			near, far := b.v[n+x][a], b.v[n+x+dz][a]
+			near += float32(t[1] * (b.v[n+x+dy][a] - near))
+			far += float32(t[1] * (b.v[n+x+dz+dy][a] - far))
+			r.v[x][a] = near + float32(t[2]*(far-near))
+		}
 	}
-	return out
+}
+
+// at is the displacement at p mm, by trilinear interpolation; r remembers the
+// line that p lies on, since most points follow one another along one.
+func (b *bend) at(p vec, r *row) vec {
+	b.along(p, r)
+	x := min(max((p[0]-b.lo[0])/bendStep, 0), float64(b.size[0]-1)-1e-6)
+	i := int(x)
+	t := float32(x - float64(i))
+	u, v := &r.v[i], &r.v[i+1]
+	return vec{float64(u[0] + float32(t*(v[0]-u[0]))), float64(u[1] + float32(t*(v[1]-u[1]))), float64(u[2] + float32(t*(v[2]-u[2])))}
 }
 
 // model is where a point of the world (mm, RAS+) lies in the unbent head of
 // average size, in which all shapes are given.
-func (a *anatomy) model(world vec) vec {
+func (a *anatomy) model(world vec, r *row) vec {
 	p := vec{world[0] / a.scale[0], world[1] / a.scale[1], world[2] / a.scale[2]}
-	d := a.bend.at(p)
+	d := a.bend.at(p, r)
 	return vec{p[0] + d[0], p[1] + d[1], p[2] + d[2]}
 }
 
@@ -94,7 +114,7 @@ func (a *anatomy) model(world vec) vec {
 func (a *anatomy) world(p vec) vec {
 	q := p
 	for range 12 { // the displacement changes by far less than a mm in a mm
-		d := a.bend.at(q)
+		d := a.bend.at(q, &row{})
 		q = sub(p, d)
 	}
 	return vec{q[0] * a.scale[0], q[1] * a.scale[1], q[2] * a.scale[2]}

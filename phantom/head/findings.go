@@ -84,7 +84,7 @@ func newLesions(findings []string, seed uint64, a *anatomy) ([]lesion, []request
 			return nil, nil, fmt.Errorf("finding %q is given twice", q.name)
 		}
 		if q.placed {
-			q.at = a.model(q.at)
+			q.at = a.model(q.at, &row{})
 			if what := a.tissueAt(q.at); !slices.Contains(brainTissues, what) && q.name != Meningioma {
 				where := "air"
 				if what != numTissues {

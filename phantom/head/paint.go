@@ -8,6 +8,7 @@ type canvas struct {
 	only   tissue    // the only tissue of the sample; mixed = see shares, numTissues = void
 	shares []float64 // of a mixed sample; what is left to 1 is void
 	edge   float64   // mm over which a surface passes through a sample
+	row    row
 }
 
 // mixed marks a sample of several tissues: most samples have one, and are
@@ -94,7 +95,9 @@ func (c *canvas) open(d float64) {
 
 // sample paints everything that may be at a point (mm, RAS+). It returns about
 // how far outside the head the point lies in mm, 0 within.
-func (a *anatomy) sample(world vec, c *canvas) float64 { return a.sampleModel(a.model(world), c) }
+func (a *anatomy) sample(world vec, c *canvas) float64 {
+	return a.sampleModel(a.model(world, &c.row), c)
+}
 
 // sampleModel is sample of a point of the unbent head.
 func (a *anatomy) sampleModel(p vec, c *canvas) float64 {
@@ -128,16 +131,18 @@ func (a *anatomy) soft(p vec, c *canvas, outline, cavity float64) {
 		return // nothing but scalp
 	}
 	m := mirrored(p)
-	grain := a.marbling.at(p)
 	// Muscles of the neck, the temples and the face, with fat between them.
 	// Seams of fat part the bellies of the muscles.
-	seam := 9*math.Abs(a.warpX.at(p)) - 0.9
-	neck := min(outline-6-0.5*grain, -30-p[2]-0.4*p[1], seam)
-	temple := min(outline-4, blob(m, vec{68, 28, -8}, vec{13, 30, 36}))
+	c.paint(muscle, min(outline-4, blob(m, vec{68, 28, -8}, vec{13, 30, 36})))
+	neck := min(outline-5, -30-p[2]-0.4*p[1])
 	cheek := min(outline-7, blob(m, vec{46, 34, -66}, vec{14, 24, 34}))
 	tongue := blob(p, vec{0, 54, -80}, vec{24, 30, 19})
-	c.paint(muscle, max(neck, temple, min(cheek, seam)))
-	c.paint(muscle, min(tongue, 2.2-grain))
+	if max(neck, cheek, tongue) > -c.edge {
+		grain := a.marbling.at(p)
+		seam := 9*math.Abs(a.warpX.at(p)) - 0.9
+		c.paint(muscle, min(max(min(neck, outline-6-0.5*grain), cheek), seam))
+		c.paint(muscle, min(tongue, 2.2-grain))
+	}
 	c.paint(venousBlood, jugularPipe.near(m))
 	c.paint(arterialBlood, carotidNeckPipe.near(m))
 }
@@ -217,30 +222,35 @@ func (a *anatomy) face(p vec, c *canvas) {
 
 // airways paints the sinuses, the nose, the throat and the ear.
 func (a *anatomy) airways(p, m vec, c *canvas) {
-	grain := a.marbling.at(p)
 	air := func(d float64) {
 		c.paint(mucosa, d)
 		c.open(d - 0.9)
+	}
+	if p[1] < 4 {
+		if m[0] > 40 && p[2] > -58 && p[2] < -14 {
+			air(min(blob(m, vec{57, -24, -36}, vec{11, 13, 15}), 0.9-1.6*a.marbling.at(p)))
+			air(earPipe.near(m))
+		}
+		return
+	}
+	if m[0] > 46 {
+		return
 	}
 	sinus := max(
 		blob(m, vec{13, 84, 2}, vec{12, 5.5, 11}),
 		blob(m, vec{27, 54, -46}, vec{13.5, 16, 14}),
 		blob(m, vec{8, 24, -30}, vec{9, 11, 9}))
-	if p[0] > -1 && p[0] < 1 {
-		sinus = min(sinus, math.Abs(p[0])-0.6) // septum
+	if m[0] < 1 {
+		sinus = min(sinus, m[0]-0.6) // septum
 	}
 	air(sinus)
-	cells := min(blob(m, vec{7, 56, -24}, vec{7, 20, 9}), 1.3-grain*1.4)
-	air(cells)
-	air(min(blob(m, vec{57, -24, -36}, vec{11, 13, 15}), 0.9-grain*1.6))
-	nasal := min(blob(p, vec{0, 62, -44}, vec{11, 34, 15}), math.Abs(p[0])-1.1)
-	turbinate := max(turbinateLow.near(m), turbinateMid.near(m))
-	air(nasal)
-	c.paint(mucosa, turbinate)
-	air(min(throatPipe.near(p)))
-	air(min(blob(p, vec{0, 62, -63}, vec{17, 22, 3.2})))
-	ear := earPipe.near(m)
-	air(ear)
+	if cells := blob(m, vec{7, 56, -24}, vec{7, 20, 9}); cells > -c.edge {
+		air(min(cells, 1.3-1.4*a.marbling.at(p)))
+	}
+	air(min(blob(p, vec{0, 62, -44}, vec{11, 34, 15}), m[0]-1.1))
+	c.paint(mucosa, max(turbinateLow.near(m), turbinateMid.near(m)))
+	air(throatPipe.near(p))
+	air(blob(p, vec{0, 62, -63}, vec{17, 22, 3.2}))
 }
 
 // brain paints everything within the dura.
