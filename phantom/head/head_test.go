@@ -44,6 +44,8 @@ func at(m *maps.Mixture, w maps.Vec) string {
 var landmarks = map[string]maps.Vec{
 	"vitreous humour right": {32, 69, -20}, "vitreous humour left": {-32, 69, -20},
 	"CSF right ventricle": {10, 2, 24}, "CSF left ventricle": {-10, 2, 24},
+	"CSF third ventricle": {0, -6, 3}, "CSF right atrium": {22, -37, 14}, "CSF left atrium": {-22, -37, 14},
+	"brain stem midbrain": {0, -15, -10}, "white matter right peduncle": {17, -38, -30}, "white matter left peduncle": {-17, -38, -30},
 	"CSF fourth ventricle": {0, -33, -28}, "CSF suprasellar cistern": {0, 6, -11},
 	"thalamus right": {10, -14, 8}, "thalamus left": {-10, -14, 8},
 	"putamen right": {27, 6, 3}, "putamen left": {-27, 6, 3},
