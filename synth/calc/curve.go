@@ -175,7 +175,8 @@ func (e *evaluator) points(w Sweep, c *Curves) ([]float64, error) {
 			a := *s.Agent
 			s.Agent = &a
 		}
-		*at(s) = x
+		// Zero would mean "not stated", and its default would be taken.
+		*at(s) = max(x, 1e-30)
 		if w.Key == "TE" {
 			s.Train.Echo = 0 // follows TE
 		}

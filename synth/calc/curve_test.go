@@ -149,3 +149,26 @@ func TestTraceRefuses(t *testing.T) {
 		}
 	}
 }
+
+// A sweep that begins at zero begins at zero, not at the key's default: no dose
+// gives the signal without agent.
+func TestSweepFromZero(t *testing.T) {
+	x := specimen("mass", 1.2, 0.1, 0.9)
+	x.Uptake = 1
+	s := synth.Scan{Name: "gre", Sequence: synth.SpoiledGRE, Timing: maps.Timing{TR: 0.05, TE: 0.004, Flip: 0.4}}
+	plain, err := Trace(1.5, s, []maps.Tissue{x}, Sweep{Key: "flip", From: 0, To: 0.4, Points: 3})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if v := plain.Curves[0].Signal[0]; v > 1e-20 {
+		t.Errorf("flip 0: %g: want 0", v)
+	}
+	s.Agent = &synth.Agent{Name: "gadobutrol"}
+	dosed, err := Trace(1.5, s, []maps.Tissue{x}, Sweep{Key: "dose", From: 0, To: 1, Points: 3})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if a, b := dosed.Curves[0].Signal[0], plain.Curves[0].Signal[2]; math.Abs(a-b) > 1e-12 {
+		t.Errorf("dose 0: %g: want %g", a, b)
+	}
+}
