@@ -9,11 +9,11 @@ import (
 // anatomy is one head: its seeded proportions and fields. World axes are RAS+
 // in mm; the origin lies between the thalami.
 type anatomy struct {
-	scale     vec          // size of the head along each axis, about 1
-	ventricle float64      // size of the ventricles, about 1
-	atrophy   float64      // 0 young .. 1 old: wider sulci and ventricles
-	folds     *randomField // of the sulci that reach deep
-	dimples   *randomField // of shallow ones between them
+	scale     vec     // size of the head along each axis, about 1
+	ventricle float64 // size of the ventricles, about 1
+	atrophy   float64 // 0 young .. 1 old: wider sulci and ventricles
+	bend      *bend
+	folds     *randomField // whose zero sheets are the sulci
 	warpX     *randomField
 	warpY     *randomField
 	marbling  *randomField // fat between muscle fibres, air cells
@@ -21,8 +21,8 @@ type anatomy struct {
 
 	// Large smooth shapes, and the distance to the sheets of the sulci, are
 	// sampled once: at every point of a picture they would cost most of the time.
-	cavity, outline, fossa, cerebellum, deep, sulci, shallow *lattice
-	ventricles, stem, callosum                               *lattice // of the right side: their mirror images are the left
+	cavity, outline, fossa, cerebellum, deep, sulci *lattice
+	hemisphere, ventricles, stem, callosum          *lattice // of the right side: their mirror images are the left
 }
 
 // proportions draws those of a seed.
@@ -33,6 +33,7 @@ func proportions(seed uint64, atrophy float64) *anatomy {
 		scale:     vec{vary(0.03), vary(0.03), vary(0.03)},
 		ventricle: vary(0.18) * (1 + 0.5*atrophy),
 		atrophy:   atrophy,
+		bend:      newBend(seed),
 	}
 }
 
@@ -46,7 +47,7 @@ func newAnatomy(ctx context.Context, seed uint64, atrophy, edge float64) (*anato
 		stream       uint64
 		lo, hi, step float64
 	}{
-		{&a.folds, 21, 31, 35, 3.5}, {&a.dimples, 25, 25, 29, 3.5}, {&a.warpX, 22, 22, 60, 3.5}, {&a.warpY, 23, 22, 60, 3.5}, {&a.marbling, 24, 5, 12, 1.2},
+		{&a.folds, 21, foldMin, foldMax, 3.5}, {&a.warpX, 22, 22, 60, 3.5}, {&a.warpY, 23, 22, 60, 3.5}, {&a.marbling, 24, 5, 12, 1.2},
 	}
 	err := parallel(ctx, len(fields), func(i int) {
 		f := fields[i]
@@ -66,47 +67,19 @@ func newAnatomy(ctx context.Context, seed uint64, atrophy, edge float64) (*anato
 	a.stem = newLattice(vec{0, -62, -130}, vec{32, 12, 14}, 1.5*coarse)
 	a.callosum = newLattice(vec{0, -58, -12}, vec{40, 58, 50}, 1.5*coarse)
 	a.sulci = newLattice(vec{-76, -104, -50}, vec{76, 86, 86}, 1.75*coarse)
-	a.shallow = newLattice(a.sulci.lo, vec{76, 86, 86}, 1.75*coarse)
+	a.hemisphere = newLattice(vec{0, -104, -50}, vec{76, 86, 86}, 2.5*coarse)
 	for _, l := range []struct {
 		l *lattice
 		f func(vec) float64
 	}{
 		{a.fossa, a.posteriorFossaShape}, {a.cavity, a.cavityShape}, {a.outline, func(p vec) float64 { return a.outlineShape(p, a.cavity.at(p)) }},
-		{a.cerebellum, a.cerebellumShape}, {a.ventricles, a.ventriclesShape}, {a.stem, a.stemShape}, {a.callosum, a.callosumShape}, {a.deep, a.deepShape}, {a.sulci, func(p vec) float64 { return a.fold(p, a.folds) }}, {a.shallow, func(p vec) float64 { return a.fold(p, a.dimples) }},
+		{a.cerebellum, a.cerebellumShape}, {a.ventricles, a.ventriclesShape}, {a.stem, a.stemShape}, {a.callosum, a.callosumShape}, {a.deep, a.deepShape}, {a.hemisphere, a.hemisphereShape}, {a.sulci, a.fold},
 	} {
 		if err := l.l.fill(ctx, l.f); err != nil {
 			return nil, err
 		}
 	}
-	if err := a.shallow.signedDistance(ctx); err != nil {
-		return nil, err
-	}
 	return a, a.sulci.signedDistance(ctx)
-}
-
-// fold is the function whose zero surfaces are the sulci.
-func (a *anatomy) fold(p vec, f *randomField) float64 {
-	if a.cavity.at(p) < -4 {
-		return 1 // no brain there
-	}
-	// Depth is compressed, so that the sheets run inward from the surface instead
-	// of across it.
-	c := vec{0, -8, 8}
-	d := sub(p, c)
-	n := length(d) + 1e-9
-	depth := 78 - n
-	s := (78 - 0.35*depth) / n
-	q := vec{c[0] + d[0]*s, c[1] + d[1]*s, c[2] + d[2]*s}
-	const warp = 8.0
-	// Half the depth counts for the warp, so that sulci bend on their way.
-	w := vec{(p[0] + q[0]) / 2, (p[1] + q[1]) / 2, (p[2] + q[2]) / 2}
-	q[0] += warp * a.warpX.at(w)
-	q[1] += warp * a.warpY.at(w)
-	// The hemispheres fold differently.
-	if p[0] < 0 {
-		q[2] += 97
-	}
-	return f.at(q)
 }
 
 // cavityShape is the inside of the skull.
@@ -131,13 +104,19 @@ func (a *anatomy) canal(p vec) float64 {
 	if p[2] > -18 {
 		return -reach
 	}
-	return canalPipe.at(p)
+	return canalPipe.near(p)
 }
 
 // cerebrum is the outer surface of the hemispheres, sulci not cut.
 func (a *anatomy) cerebrum(p vec, cavity, fossa float64) float64 {
 	// Fluid over the hemispheres is thicker above than at the base.
 	return min(cavity-1.2-0.8*min(max((p[2]+5)/25, 0), 1), -fossa-1.2)
+}
+
+// below is the depth in mm within the posterior fossa: its lattice, and beyond
+// it less the distance to it.
+func (a *anatomy) below(p vec) float64 {
+	return a.fossa.at(p) - max(p[2]-8, 0) - max(p[1]-10, 0)
 }
 
 // stemShape is midbrain, pons, medulla and cord.
@@ -152,15 +131,15 @@ func (a *anatomy) stemShape(p vec) float64 {
 // cerebellumShape is its outer surface, folia not cut.
 func (a *anatomy) cerebellumShape(p vec) float64 {
 	m := mirrored(p)
-	return join(ellipsoid(m, vec{20, -56, -32}, vec{34, 37, 29}), ellipsoid(p, vec{0, -56, -28}, vec{16, 30, 28}), 6)
+	return join(ellipsoid(m, vec{20, -56, -32}, vec{36, 37, 31}), ellipsoid(p, vec{0, -56, -28}, vec{18, 31, 31}), 6)
 }
 
 // folia is the distance to the nearest fissure of the cerebellum.
 func (a *anatomy) folia(p vec) float64 {
 	y, z := p[1]+34, p[2]+28
-	r := math.Hypot(y, z)
+	r := hypot(y, z)
 	angle := math.Atan2(z, -y) + 0.10*a.warpX.at(p)
-	const fissures = 13
+	const fissures = 15
 	cell := angle * fissures / math.Pi
 	return math.Abs(cell-math.Round(cell)) * math.Pi / fissures * max(r, 4)
 }
@@ -178,11 +157,13 @@ func (a *anatomy) ventriclesShape(p vec) float64 {
 		return -12
 	}
 	lateral := tube(m,
-		node{vec{10, 34, 10}, 3.2 * s}, node{vec{9, 22, 19}, 5.2 * s}, node{vec{9.5, 2, 24}, 5.0 * s},
-		node{vec{13, -20, 23}, 5.2 * s}, node{vec{23, -37, 14}, 6.8 * s}, node{vec{31, -26, -2}, 4 * s}, node{vec{30, -4, -16}, 2.5 * s})
-	occipital := tube(m, node{vec{23, -38, 13}, 6 * s}, node{vec{22, -62, 9}, 2.2 * s})
+		node{vec{10, 34, 10}, 3.0 * s}, node{vec{7.5, 22, 18}, 5.0 * s}, node{vec{7.5, 2, 23.5}, 4.8 * s},
+		node{vec{11, -20, 23}, 4.8 * s}, node{vec{22, -37, 14}, 6.0 * s}, node{vec{31, -26, -2}, 3.5 * s}, node{vec{30, -4, -16}, 2.2 * s})
+	occipital := tube(m, node{vec{22, -38, 13}, 5.2 * s}, node{vec{22, -58, 9}, 1.8 * s})
 	third := ellipsoid(p, vec{0, -6, 3}, vec{2.6 * s, 13, 9})
-	return max(join(lateral, occipital, 3), third)
+	// Their bodies meet below the callosum and above the fornix.
+	body := meet(meet(ellipsoid(p, vec{0, 2, 14}, vec{5.5, 34, 19}), -a.callosumShape(p)-0.3, 2), p[2]-8-0.31*(28-p[1]), 4)
+	return max(join(join(lateral, occipital, 3), body, 3), third)
 }
 
 // callosumShape arches over the ventricles from side to side.
@@ -194,17 +175,25 @@ func (a *anatomy) callosumShape(p vec) float64 {
 // deepShape is the part of the hemispheres that no sulcus reaches.
 func (a *anatomy) deepShape(p vec) float64 {
 	m := mirrored(p)
-	return join(ellipsoid(m, vec{16, -2, 9}, vec{20, 38, 21}), a.callosumShape(p), 4)
+	middle := ellipsoid(p, vec{0, 3, 12}, vec{14, 32, 18})
+	return join(join(ellipsoid(m, vec{16, -2, 9}, vec{20, 38, 21}), middle, 4), a.callosumShape(p), 4)
 }
 
-// fissure is the distance to the great fissures: between the hemispheres and
-// along the Sylvian fissure with the insula.
-func (a *anatomy) fissure(p vec) float64 {
+// fissure is the distance to the great fissures and their half width: between
+// the hemispheres, and along the Sylvian fissure with the insula.
+func (a *anatomy) fissure(p vec, surface, deep float64) (d, half float64) {
 	m := mirrored(p)
-	// Between the hemispheres, above and around the callosum.
-	d := math.Abs(p[0])
-	if in := a.deep.at(vec{0, p[1], p[2]}); in > 0 {
-		d = hypot(d, in)
+	// Between the hemispheres, above and around the callosum. Below the falx the
+	// hemispheres touch along an uneven line.
+	d, half = m[0], gapHalf
+	if d < 20 {
+		if free := min((surface-falxDepth(p))/8, (-deep-1)/6, 1); free > 0 {
+			d = math.Abs(p[0] - 2*free*a.warpX.at(vec{17, p[1], p[2]}))
+			half -= 0.2 * free
+		}
+		if in := a.deep.at(vec{0, p[1], p[2]}); in > 0 {
+			d = hypot(d, in)
+		}
 	}
 	// The Sylvian fissure: a sheet inward to the insula, and the sheet over it.
 	y, z := m[1], m[2]
@@ -212,7 +201,10 @@ func (a *anatomy) fissure(p vec) float64 {
 	outward := max(40-m[0], 0, y-26, -26-y)
 	inlet := hypot(z-slope, outward)
 	insula := hypot(m[0]-39+0.012*(y-2)*(y-2)-0.02*(z-0.4*slope)*(z-0.4*slope)-1.5*a.warpY.at(p), max(math.Abs(z-0.4*slope)-11, 0, y-22, -16-y))
-	return min(d, inlet, insula)
+	if sylvian := min(inlet, insula); sylvian < d {
+		return sylvian, sylvianHalf
+	}
+	return d, half
 }
 
 // outlineShape is the skin.
@@ -230,6 +222,6 @@ func (a *anatomy) outlineShape(p vec, cavity float64) float64 {
 	d = join(join(d, nose, 8), join(nostril, lips, 4), 8)
 	d = join(join(d, brow, 10), neck, 24)
 	// The sockets are hollows beside the nose.
-	d = min(d, -ellipsoid(m, vec{34, 102, -24}, vec{18, 16, 11}))
+	d = meet(d, -ellipsoid(m, vec{34, 102, -23}, vec{18, 16, 13}), 9)
 	return join(d, ear, 5)
 }

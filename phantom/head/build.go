@@ -257,10 +257,11 @@ func texture(seed uint64) *maps.Volume {
 // shade adds to the texture what makes white matter look more like grey toward
 // the cortex: longer relaxation in the outer 15 mm of the brain.
 func (a *anatomy) shade(texture *maps.Volume) {
+	var r row
 	for n := range texture.Data {
 		ijk := texture.Grid.IJK(n)
 		w := texture.Grid.World(maps.Vec{float64(ijk[0]), float64(ijk[1]), float64(ijk[2])})
-		depth := a.cavity.at(vec{w[0] / a.scale[0], w[1] / a.scale[1], w[2] / a.scale[2]})
+		depth := a.cavity.at(a.model(w, &r))
 		if depth > 0 {
 			texture.Data[n] += float32(0.9 * math.Exp(-depth*depth/144))
 		}

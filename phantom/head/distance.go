@@ -10,15 +10,16 @@ import (
 
 // lattice holds a function of space on a regular lattice.
 type lattice struct {
-	lo   vec
-	step float64 // mm
-	size [3]int
-	v    []float32
+	lo    vec
+	step  float64 // mm
+	perMM float64 // 1/step
+	size  [3]int
+	v     []float32
 }
 
 // newLattice makes a lattice over a box, without values.
 func newLattice(lo, hi vec, step float64) *lattice {
-	l := &lattice{lo: lo, step: step}
+	l := &lattice{lo: lo, step: step, perMM: 1 / step}
 	for a := range 3 {
 		l.size[a] = int(math.Ceil((hi[a]-lo[a])/step)) + 1
 	}
@@ -47,25 +48,33 @@ func (l *lattice) fill(ctx context.Context, f func(vec) float64) error {
 // at returns the value at p mm by trilinear interpolation; beyond the box, that
 // of its border.
 func (l *lattice) at(p vec) float64 {
-	var i [3]int
-	var t [3]float64
-	for a := range 3 {
-		x := (p[a] - l.lo[a]) / l.step
-		x = min(max(x, 0), float64(l.size[a]-1)-1e-6)
-		i[a] = int(x)
-		t[a] = x - float64(i[a])
-	}
+	x, i := l.cell(p[0], 0)
+	y, j := l.cell(p[1], 1)
+	z, k := l.cell(p[2], 2)
 	sx := l.size[0]
-	n := (i[2]*l.size[1]+i[1])*sx + i[0]
+	n := (k*l.size[1]+j)*sx + i
 	m := n + sx*l.size[1]
-	v := l.v
-	a := float64(v[n]) + t[0]*float64(v[n+1]-v[n])
-	b := float64(v[n+sx]) + t[0]*float64(v[n+sx+1]-v[n+sx])
-	c := float64(v[m]) + t[0]*float64(v[m+1]-v[m])
-	d := float64(v[m+sx]) + t[0]*float64(v[m+sx+1]-v[m+sx])
-	a += t[1] * (b - a)
-	c += t[1] * (d - c)
-	return a + t[2]*(c-a)
+	near, far := l.v[n:n+sx+2], l.v[m:m+sx+2]
+	a := float64(near[0]) + x*float64(near[1]-near[0])
+	b := float64(near[sx]) + x*float64(near[sx+1]-near[sx])
+	c := float64(far[0]) + x*float64(far[1]-far[0])
+	d := float64(far[sx]) + x*float64(far[sx+1]-far[sx])
+	a += y * (b - a)
+	c += y * (d - c)
+	return a + z*(c-a)
+}
+
+// cell is the lattice cell that x mm lie in along an axis, and how far in it.
+func (l *lattice) cell(x float64, axis int) (float64, int) {
+	x = (x - l.lo[axis]) * l.perMM
+	if x <= 0 {
+		return 0, 0
+	}
+	i := int(x)
+	if last := l.size[axis] - 2; i > last {
+		return 1, last
+	}
+	return x - float64(i), i
 }
 
 // parallel runs f(0) to f(n-1) on all cores.

@@ -84,9 +84,7 @@ func newLesions(findings []string, seed uint64, a *anatomy) ([]lesion, []request
 			return nil, nil, fmt.Errorf("finding %q is given twice", q.name)
 		}
 		if q.placed {
-			for d := range 3 { // from the world to the proportions of this head
-				q.at[d] /= a.scale[d]
-			}
+			q.at = a.model(q.at, &row{})
 			if what := a.tissueAt(q.at); !slices.Contains(brainTissues, what) && q.name != Meningioma {
 				where := "air"
 				if what != numTissues {
@@ -112,7 +110,7 @@ var brainTissues = []tissue{cortex, whiteMatter, caudate, putamen, pallidum, tha
 // tissueAt is the tissue that fills most of a point.
 func (a *anatomy) tissueAt(p vec) tissue {
 	c := canvas{shares: make([]float64, numTissues), edge: 0.5}
-	a.sample(vec{p[0] * a.scale[0], p[1] * a.scale[1], p[2] * a.scale[2]}, &c)
+	a.sampleModel(p, &c)
 	if c.only != mixed {
 		return c.only
 	}
@@ -180,7 +178,7 @@ func newLesion(q request, r *rand.Rand, a *anatomy) (lesion, error) {
 		dir = sub(q.at, vec{0, -8, 14})
 	}
 	n := length(dir)
-	if q.placed && n < 1 {
+	if q.placed && n < 10 {
 		return nil, fmt.Errorf("its place is the middle of the head: want one near the skull")
 	}
 	for s := 20.0; s < 120; s += 0.25 {

@@ -40,10 +40,12 @@ func at(m *maps.Mixture, w maps.Vec) string {
 }
 
 // landmarks are points of known anatomy. World axes: right, anterior, superior;
-// heads differ in size, so the points are given in their proportions.
+// heads differ in size and shape, so the points are those of the unbent head.
 var landmarks = map[string]maps.Vec{
 	"vitreous humour right": {32, 69, -20}, "vitreous humour left": {-32, 69, -20},
 	"CSF right ventricle": {10, 2, 24}, "CSF left ventricle": {-10, 2, 24},
+	"CSF third ventricle": {0, -6, 3}, "CSF right atrium": {22, -37, 14}, "CSF left atrium": {-22, -37, 14},
+	"brain stem midbrain": {0, -15, -10}, "white matter right peduncle": {17, -38, -30}, "white matter left peduncle": {-17, -38, -30},
 	"CSF fourth ventricle": {0, -33, -28}, "CSF suprasellar cistern": {0, 6, -11},
 	"thalamus right": {10, -14, 8}, "thalamus left": {-10, -14, 8},
 	"putamen right": {27, 6, 3}, "putamen left": {-27, 6, 3},
@@ -52,19 +54,16 @@ var landmarks = map[string]maps.Vec{
 	"white matter internal capsule right": {17, -5, 13}, "white matter genu": {0, 38, 16}, "white matter splenium": {0, -37, 21},
 	"brain stem pons": {0, -17, -26}, "brain stem medulla": {0, -26, -48}, "brain stem cord": {0, -40, -110},
 	"red nucleus right": {5, -17.5, -5.5}, "red nucleus left": {-5, -17.5, -5.5},
-	"cortical bone clivus": {0, 8, -27.5}, "fat orbit": {38, 50, -26}, "muscle tongue": {8, 52, -82},
+	"cortical bone clivus": {0, 8, -27.5}, "fat orbit": {38, 58, -27}, "muscle tongue": {8, 52, -82},
 	"venous blood sagittal sinus": {0, -93.5, 20}, "arterial blood carotid right": {12, 20, -28},
 	"air maxillary sinus": {27, 54, -46}, "air in front": {0, 122, 0},
 }
 
 func checkLandmarks(t *testing.T, seed uint64, m *maps.Mixture) {
 	t.Helper()
-	scale := proportions(seed, 0).scale
-	for place, w := range landmarks {
-		for a := range 3 {
-			w[a] *= scale[a]
-		}
-		if got := at(m, w); !strings.HasPrefix(place, got) {
+	a := proportions(seed, 0)
+	for place, p := range landmarks {
+		if got := at(m, a.world(p)); !strings.HasPrefix(place, got) {
 			t.Errorf("seed %d: %s is %s", seed, place, got)
 		}
 	}

@@ -2,17 +2,13 @@ package head
 
 import "math"
 
-const (
-	sulcusHalf  = 0.4 // mm, half width of a sulcus at depth
-	cortexThick = 2.7 // mm; adults have 2.5 on average (Fischl and Dale, PNAS 97 (2000) 11050, from memory)
-)
-
 // canvas collects the shares of one sampled point: each layer covers what lies
 // below it in proportion to how much of the sample it fills.
 type canvas struct {
 	only   tissue    // the only tissue of the sample; mixed = see shares, numTissues = void
 	shares []float64 // of a mixed sample; what is left to 1 is void
 	edge   float64   // mm over which a surface passes through a sample
+	row    row
 }
 
 // mixed marks a sample of several tissues: most samples have one, and are
@@ -103,8 +99,12 @@ func (c *canvas) open(d float64) {
 // sample paints everything that may be at a point (mm, RAS+). It returns about
 // how far outside the head the point lies in mm, 0 within.
 func (a *anatomy) sample(world vec, c *canvas) float64 {
+	return a.sampleModel(a.model(world, &c.row), c)
+}
+
+// sampleModel is sample of a point of the unbent head.
+func (a *anatomy) sampleModel(p vec, c *canvas) float64 {
 	c.only = numTissues
-	p := vec{world[0] / a.scale[0], world[1] / a.scale[1], world[2] / a.scale[2]}
 	cavity := a.cavity.at(p)
 	inner := max(cavity, a.canal(p))
 	if inner < c.edge {
@@ -134,16 +134,18 @@ func (a *anatomy) soft(p vec, c *canvas, outline, cavity float64) {
 		return // nothing but scalp
 	}
 	m := mirrored(p)
-	grain := a.marbling.at(p)
 	// Muscles of the neck, the temples and the face, with fat between them.
 	// Seams of fat part the bellies of the muscles.
-	seam := 9*math.Abs(a.warpX.at(p)) - 0.9
-	neck := min(outline-6-0.5*grain, -30-p[2]-0.4*p[1], seam)
-	temple := min(outline-4, blob(m, vec{68, 28, -8}, vec{13, 30, 36}))
+	c.paint(muscle, min(outline-4, blob(m, vec{68, 28, -8}, vec{13, 30, 36})))
+	neck := min(outline-5, -30-p[2]-0.4*p[1])
 	cheek := min(outline-7, blob(m, vec{46, 34, -66}, vec{14, 24, 34}))
 	tongue := blob(p, vec{0, 54, -80}, vec{24, 30, 19})
-	c.paint(muscle, max(neck, temple, min(cheek, seam)))
-	c.paint(muscle, min(tongue, 2.2-grain))
+	if max(neck, cheek, tongue) > -c.edge {
+		grain := a.marbling.at(p)
+		seam := 9*math.Abs(a.warpX.at(p)) - 0.9
+		c.paint(muscle, min(max(min(neck, outline-6-0.5*grain), cheek), seam))
+		c.paint(muscle, min(tongue, 2.2-grain))
+	}
 	c.paint(venousBlood, jugularPipe.near(m))
 	c.paint(arterialBlood, carotidNeckPipe.near(m))
 }
@@ -151,7 +153,7 @@ func (a *anatomy) soft(p vec, c *canvas, outline, cavity float64) {
 // bones paints skull, jaws and spine.
 func (a *anatomy) bones(p vec, c *canvas, cavity float64) {
 	m := mirrored(p)
-	thick := 7.2 + 1.2*a.warpX.at(vec{p[0] / 2, p[1] / 2, p[2] / 2})
+	thick := 7.2 + 0.8*a.warpX.at(vec{p[0] / 2, p[1] / 2, p[2] / 2})
 	if p[2] > -62 && -p[2] < 62 {
 		c.paint(bone, cavity+thick)
 		if p[2] > -30 {
@@ -196,15 +198,15 @@ func (a *anatomy) jaws(p, m vec, c *canvas) {
 	cheekbone := cheekbonePipe.near(m)
 	c.paint(bone, cheekbone)
 	c.paint(marrow, cheekbone-2.5)
-	c.paint(bone, blob(p, vec{0, 84, -14}, vec{30, 9, 12}))
+	c.paint(bone, blob(p, vec{0, 84, -10}, vec{26, 7, 10}))
 }
 
 // face paints the eyes and the airways.
 func (a *anatomy) face(p vec, c *canvas) {
 	m := mirrored(p)
-	orbit := blob(m, vec{30, 60, -20}, vec{19, 36, 18})
-	c.paint(bone, orbit+1.6)
-	c.paint(fat, orbit)
+	orbit := orbitPipe.near(m)
+	c.paint(bone, min(orbit+1.6, 73-p[1]))
+	c.paint(fat, min(orbit, 78-p[1]))
 	if orbit <= -clearance {
 		a.airways(p, m, c)
 		return
@@ -223,65 +225,59 @@ func (a *anatomy) face(p vec, c *canvas) {
 
 // airways paints the sinuses, the nose, the throat and the ear.
 func (a *anatomy) airways(p, m vec, c *canvas) {
-	grain := a.marbling.at(p)
 	air := func(d float64) {
 		c.paint(mucosa, d)
 		c.open(d - 0.9)
+	}
+	if p[1] < 4 {
+		if m[0] > 40 && p[2] > -58 && p[2] < -14 {
+			air(min(blob(m, vec{57, -24, -36}, vec{11, 13, 15}), 0.9-1.6*a.marbling.at(p)))
+			air(earPipe.near(m))
+		}
+		return
+	}
+	if m[0] > 46 {
+		return
 	}
 	sinus := max(
 		blob(m, vec{13, 84, 2}, vec{12, 5.5, 11}),
 		blob(m, vec{27, 54, -46}, vec{13.5, 16, 14}),
 		blob(m, vec{8, 24, -30}, vec{9, 11, 9}))
-	if p[0] > -1 && p[0] < 1 {
-		sinus = min(sinus, math.Abs(p[0])-0.6) // septum
+	if m[0] < 1 {
+		sinus = min(sinus, m[0]-0.6) // septum
 	}
 	air(sinus)
-	cells := min(blob(m, vec{7, 56, -24}, vec{7, 20, 9}), 1.3-grain*1.4)
-	air(cells)
-	air(min(blob(m, vec{57, -24, -36}, vec{11, 13, 15}), 0.9-grain*1.6))
-	nasal := min(blob(p, vec{0, 62, -44}, vec{11, 34, 15}), math.Abs(p[0])-1.1)
-	turbinate := max(turbinateLow.near(m), turbinateMid.near(m))
-	air(nasal)
-	c.paint(mucosa, turbinate)
+	if cells := blob(m, vec{7, 56, -24}, vec{7, 20, 9}); cells > -c.edge {
+		air(min(cells, 1.3-1.4*a.marbling.at(p)))
+	}
+	air(min(blob(p, vec{0, 62, -44}, vec{11, 34, 15}), m[0]-1.1))
+	c.paint(mucosa, max(turbinateLow.near(m), turbinateMid.near(m)))
 	air(throatPipe.near(p))
-	air(min(blob(p, vec{0, 62, -63}, vec{17, 22, 3.2})))
-	ear := earPipe.near(m)
-	air(ear)
+	air(blob(p, vec{0, 62, -63}, vec{17, 22, 3.2}))
 }
 
 // brain paints everything within the dura.
 func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	m := mirrored(p)
-	fossa := math.Inf(-1)
-	if p[2] < 8 {
-		fossa = a.fossa.at(p)
-	}
-	stem := -float64(reach)
-	if p[2] < 14 {
-		stem = a.stem.at(m)
-	}
+	fossa := a.below(p)
 	if cerebrum := a.cerebrum(p, cavity, fossa); cerebrum > -c.edge {
-		a.hemispheres(p, c, cerebrum, stem)
+		a.hemispheres(p, m, c, cerebrum, fossa)
 	}
-	// Falx and tentorium; the sinus lies in the root of the falx.
-	if ends := min(cavity-5, -a.deep.at(p)-5); p[2] > -8 && ends > -c.edge {
-		c.cover(dura, c.slab(math.Abs(p[0]), 0.55)*min(ends/c.edge+0.5, 1))
+	// The falx, in whose root the sinus lies, and the tentorium.
+	if m[0] < 1+c.edge && p[2] > -8 {
+		ends := min(cavity-5, falxDepth(p)-cavity, -a.deep.at(p)-5)
+		c.cover(dura, c.slab(m[0], 0.4)*min(ends/c.edge+0.5, 1))
 	}
-	if cavity > 1 && p[1] < -14 && p[2] > -30 {
-		c.cover(dura, c.slab(math.Abs(fossa+0.6), 0.6)*min((m[0]-7)/c.edge+0.5, 1))
+	if fossa > -2-c.edge {
+		if cavity > 1 && p[1] < -14 && p[2] > -30 {
+			c.cover(dura, c.slab(math.Abs(fossa+0.6), 0.6)*min((m[0]-7)/c.edge+0.5, 1))
+		}
+		if cerebellum := min(a.cerebellum.at(p), fossa-1.6); cerebellum > -c.edge {
+			a.paintCerebellum(p, c, cerebellum)
+		}
 	}
-	if cerebellum := min(a.cerebellum.at(p), fossa-1.6); cerebellum > -c.edge {
-		a.paintCerebellum(p, c, cerebellum)
-	}
-	c.paint(brainStem, stem)
-	if p[2] < 4 && p[2] > -42 && p[1] < 0 {
-		c.paint(substantiaNigra, min(substantiaPipe.near(m), stem-1.2))
-		c.paint(redNucleus, min(blob(m, vec{5, -17.5, -5.5}, vec{3, 3, 4.2}), stem))
-		dentateShell := blob(m, vec{15, -58, -33}, vec{7, 9, 5.5})
-		c.paint(dentate, min(dentateShell, 1.8-dentateShell)) // a folded sheet, open inside
-	}
-	if p[2] < 4 && m[0] < 9 {
-		c.paint(csf, a.fourthVentricle(p))
+	if p[2] < 14 && p[1] < 12 && p[1] > -62 && m[0] < 32 {
+		a.brainstem(p, m, c)
 	}
 	a.vessels(p, c, cavity)
 	for _, l := range a.lesions {
@@ -289,37 +285,42 @@ func (a *anatomy) brain(p vec, c *canvas, cavity float64) {
 	}
 }
 
+// brainstem paints the stem with its nuclei, the way to the cerebellum and what
+// lies there, and the fourth ventricle.
+func (a *anatomy) brainstem(p, m vec, c *canvas) {
+	c.paint(whiteMatter, peduncle.near(m))
+	stem := a.stem.at(m)
+	c.paint(brainStem, stem)
+	if p[2] < 4 && p[2] > -42 && p[1] < 0 {
+		c.paint(substantiaNigra, min(substantiaPipe.near(m), stem-1.2))
+		c.paint(redNucleus, min(blob(m, vec{5, -17.5, -5.5}, vec{3, 3, 4.2}), stem))
+		dentateShell := blob(m, vec{15, -58, -33}, vec{7, 9, 5.5})
+		c.paint(dentate, min(dentateShell, 1.8-dentateShell)) // a folded sheet, open inside
+	}
+	if m[0] < 10 && p[2] < 6 {
+		c.paint(csf, a.fourthVentricle(p))
+	}
+}
+
 // hemispheres paints the cerebrum: folded cortex over white matter, with what
 // lies deep in it.
-func (a *anatomy) hemispheres(p vec, c *canvas, surface, stem float64) {
-	m := mirrored(p)
+func (a *anatomy) hemispheres(p, m vec, c *canvas, surface, fossa float64) {
 	deep := a.deep.at(p)
-	gap := a.fissure(p) // to the great fissures
-	sulcus := 40.0      // to the nearest sulcus
-	if min(surface, gap) < 32 && deep < 8 {
-		sulcus = math.Abs(a.sulci.at(p))
-		deepest := sulcus
-		uneven := a.warpX.at(vec{p[1], p[2], p[0]})
-		// A sulcus ends about 8..24 mm below the surface, outer or medial, and before
-		// the deep part.
-		if end := max(min(surface, gap+4.3)-14-4.5*uneven, deep+4); end > 0 {
-			sulcus = hypot(sulcus, end)
-		}
-		if min(surface, gap) < 16 {
-			shallow := math.Abs(a.shallow.at(p))
-			// It keeps clear of the sulci that reach deep.
-			if end := max(min(surface, gap+3)-7-2*uneven, deep+4, 7.5-deepest); end > 0 {
-				shallow = hypot(shallow, end)
-			}
-			sulcus = min(sulcus, shallow)
-		}
+	gap, gapHalf := a.fissure(p, surface, deep)
+	sulcus := 40.0 // to the nearest sulcus
+	if min(surface, m[0]) < 32 && deep < 8 {
+		sulcus = a.sulcus(p, m, surface, fossa, deep)
 	}
-	widen := 0.4*max(0, 1-surface/6) + 0.5*a.atrophy // open toward the surface
-	pia := min(surface, sulcus-sulcusHalf-widen, gap-0.55)
+	// Sulci open toward the surface, and the crowns between them are round.
+	open := opening * square(max(0, 1-sulcus/openingReach))
+	crown := surface - open
+	widen := 0.4*max(0, 1-surface/6) + 0.5*a.atrophy
+	gap -= 0.6 * open
+	pia := min(meet(crown, sulcus-sulcusHalf-widen, 3), gap-gapHalf)
 	// Sulci are thinner than most voxels: fluid fills of the brain what their
 	// sheets fill of the voxel.
-	inside := min(surface/c.edge+0.5, 1)
-	fluid := max(c.slab(sulcus, sulcusHalf+widen), c.slab(gap, 0.55))
+	inside := min(crown/c.edge+0.5, 1)
+	fluid := max(c.slab(sulcus, sulcusHalf+widen), c.slab(gap, gapHalf))
 	if inside > 0 {
 		if fluid > 0 {
 			c.cover(csf, inside)
@@ -330,27 +331,43 @@ func (a *anatomy) hemispheres(p vec, c *canvas, surface, stem float64) {
 	if deep > -2 {
 		c.paint(whiteMatter, min(deep, gap-1.2))
 	}
+	if m[0] < 54 && p[2] > -36 && p[2] < 50 && p[1] > -84 && p[1] < 60 {
+		a.core(p, m, c, surface)
+	}
+	if p[2] > 14 || p[2] < -50 || m[0] > 32 || p[1] > 20 || p[1] < -62 {
+		return
+	}
+	stem := a.stem.at(m)
+	// Cisterns about the midbrain and above the sella.
+	c.paint(csf, meet(min(2.6-math.Abs(stem+1.8), surface+6), -p[2], 6))
+	c.paint(csf, meet(blob(p, vec{0, 6, -11}, vec{12, 10, 6}), 9-math.Abs(p[0])-0.4*math.Abs(p[1]-6), 5))
+}
+
+// core paints what lies deep in the hemispheres.
+func (a *anatomy) core(p, m vec, c *canvas, surface float64) {
 	c.paint(whiteMatter, min(a.callosum.at(m), surface))
 	// Deep grey matter, iron-rich parts last.
 	c.paint(caudate, caudatePipe.near(m))
-	c.paint(putamen, blob(m, vec{27, 6, 3}, vec{6, 19, 12}))
-	c.paint(pallidum, blob(m, vec{20.5, 3, 1.5}, vec{4.2, 11, 8.5}))
-	c.paint(thalamus, blob(m, vec{10.5, -14, 8}, vec{8.5, 15, 10}))
-	c.paint(cortex, hippocampusPipe.near(m)) // hippocampus
-	c.paint(csf, a.ventricles.at(m))
-	if p[2] > 14 || p[2] < -50 {
-		return
+	// Putamen and pallidum make a wedge with its edge toward the middle, along
+	// which the internal capsule bends.
+	if lentiform := min(blob(m, vec{31, 3, 3}, vec{14, 20, 12}), 32.5-0.008*square(p[1]-3)-m[0]); lentiform > -clearance {
+		c.paint(putamen, lentiform)
+		c.within(pallidum, min(lentiform-0.3, 24-0.004*square(p[1]-3)-m[0]), putamen)
 	}
-	// Cisterns about the midbrain and above the sella.
-	c.paint(csf, meet(min(4.5-math.Abs(stem+3.5), surface+6), -p[2], 8))
-	c.paint(csf, meet(blob(p, vec{0, 6, -11}, vec{12, 10, 6}), 9-math.Abs(p[0])-0.4*math.Abs(p[1]-6), 5))
+	c.paint(thalamus, blob(m, vec{9.5, -15, 8}, vec{7.8, 14.5, 9.5}))
+	c.paint(cortex, hippocampusPipe.near(m)) // hippocampus
+	ventricle := a.ventricles.at(m)
+	c.paint(csf, ventricle)
+	if p[1] > -16 && p[2] > 13-0.2*p[1] { // the septum
+		c.cover(whiteMatter, c.slab(m[0], 0.7)*min(ventricle/c.edge+0.5, 1))
+	}
 }
 
 // paintCerebellum paints its leaves.
 func (a *anatomy) paintCerebellum(p vec, c *canvas, surface float64) {
 	fissure := a.folia(p)
-	if surface > 14 {
-		fissure = hypot(fissure, surface-14)
+	if surface > 17 {
+		fissure = hypot(fissure, surface-17)
 	}
 	pia := min(surface, fissure-0.35)
 	c.paint(cortex, surface)
@@ -363,10 +380,15 @@ func (a *anatomy) vessels(p vec, c *canvas, cavity float64) {
 	m := mirrored(p)
 	// The superior sagittal sinus is a wedge under the vault.
 	if p[2] > 5 || p[1] < -60 {
-		c.paint(venousBlood, min(4.2-0.55*cavity-math.Abs(p[0]), cavity-0.3))
+		c.paint(venousBlood, min(3.2-0.015*p[1]-0.55*cavity-math.Abs(p[0]), cavity-0.3))
 	}
-	transverse := min(3.6-math.Abs(p[2]+16+0.02*m[0]), 5-cavity, cavity-0.4, -40-p[1])
-	c.paint(venousBlood, transverse)
+	if p[2] < 0 && p[1] < -8 {
+		transverse := min(3.4-math.Abs(p[2]+12+0.25*m[0]), 4.5-cavity, cavity-0.4, -44-p[1])
+		c.paint(venousBlood, max(transverse, min(sigmoidPipe.near(m), cavity-0.4)))
+	}
+	if p[2] > 38 || m[0] > 46 || p[1] < -10 {
+		return // no large artery
+	}
 	for _, artery := range []float64{basilarPipe.near(p), carotidPipe.near(m), anteriorPipe.near(m)} {
 		if p[2] > -20 && p[2] < -3 {
 			c.paint(csf, artery+1.4) // the cisterns that they run in

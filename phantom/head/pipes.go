@@ -24,6 +24,9 @@ var (
 	earPipe         = newPipe(node{vec{84, -12, -30}, 3}, node{vec{62, -10, -31}, 2.6})
 	caudatePipe     = newPipe(node{vec{13, 24, 9}, 6}, node{vec{15, 12, 17}, 5}, node{vec{18, -8, 24}, 3.2}, node{vec{24, -26, 21}, 2})
 	hippocampusPipe = newPipe(node{vec{25, -4, -18}, 5}, node{vec{27, -22, -10}, 4.2}, node{vec{24, -32, -2}, 3})
+	peduncle        = newPipe(node{vec{9, -20, -27}, 7}, node{vec{20, -44, -32}, 7}) // from the pons to the cerebellum
+	orbitPipe       = newPipe(node{vec{11, 28, -15}, 4}, node{vec{31, 70, -21}, 18})
+	sigmoidPipe     = newPipe(node{vec{50, -44, -25}, 3.4}, node{vec{46, -34, -40}, 3.4}, node{vec{34, -18, -50}, 3.6})
 	substantiaPipe  = newPipe(node{vec{3.5, -9.5, -8.5}, 1.5}, node{vec{8, -13, -8}, 1.9}, node{vec{11, -18, -7}, 1.4})
 	basilarPipe     = newPipe(node{vec{0, -2.2, -16}, 1.8}, node{vec{0, -3, -36}, 1.9})
 	anteriorPipe    = newPipe(node{vec{11, 12, -12}, 1.6}, node{vec{2.6, 17, -9}, 1.3}, node{vec{2.4, 34, 0}, 1.2}, node{vec{2.4, 46, 14}, 1.1}, node{vec{2.4, 38, 31}, 1})

@@ -97,11 +97,13 @@ func (f *randomField) at(p vec) float64 {
 	var i0, i1 [3]int
 	var t [3]float64
 	for a := range 3 {
-		x := p[a]/f.step + 1000*fieldSize
-		n := math.Floor(x)
-		t[a] = x - n
-		i0[a] = int(n) % fieldSize
-		i1[a] = (i0[a] + 1) % fieldSize
+		x := p[a] / f.step
+		x -= fieldSize * math.Floor(x/fieldSize)
+		i0[a] = min(int(x), fieldSize-1)
+		t[a] = x - float64(i0[a])
+		if i1[a] = i0[a] + 1; i1[a] == fieldSize {
+			i1[a] = 0
+		}
 	}
 	row := func(y, z int) float64 {
 		base := (z*fieldSize + y) * fieldSize
