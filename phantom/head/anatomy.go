@@ -19,6 +19,8 @@ type anatomy struct {
 	marbling  *randomField // fat between muscle fibres, air cells
 	lesions   []lesion
 
+	lateral, occipital *pipe // of the ventricles
+
 	// Large smooth shapes, and the distance to the sheets of the sulci, are
 	// sampled once: at every point of a picture they would cost most of the time.
 	cavity, outline, fossa, cerebellum, deep, sulci *lattice
@@ -29,12 +31,18 @@ type anatomy struct {
 func proportions(seed uint64, atrophy float64) *anatomy {
 	r := rand.New(rand.NewPCG(seed, 11))
 	vary := func(by float64) float64 { return 1 + by*(2*r.Float64()-1) }
-	return &anatomy{
+	a := &anatomy{
 		scale:     vec{vary(0.03), vary(0.03), vary(0.03)},
 		ventricle: vary(0.18) * (1 + 0.5*atrophy),
 		atrophy:   atrophy,
 		bend:      newBend(seed),
 	}
+	s := a.ventricle
+	a.lateral = newPipe(
+		node{vec{10, 34, 10}, 3.0 * s}, node{vec{7.5, 22, 18}, 5.0 * s}, node{vec{7.5, 2, 23.5}, 4.8 * s},
+		node{vec{11, -20, 23}, 4.8 * s}, node{vec{22, -37, 14}, 6.0 * s}, node{vec{31, -26, -2}, 3.5 * s}, node{vec{30, -4, -16}, 2.2 * s})
+	a.occipital = newPipe(node{vec{22, -38, 13}, 5.2 * s}, node{vec{22, -58, 9}, 1.8 * s})
+	return a
 }
 
 // newAnatomy makes the head of a seed, without findings, for voxels of an edge
@@ -60,7 +68,7 @@ func newAnatomy(ctx context.Context, seed uint64, atrophy, edge float64) (*anato
 	for d := range 3 {
 		lo[d], hi[d] = 1.05*low[d], 1.05*high[d]
 	}
-	a.cavity, a.outline = newLattice(lo, hi, 3*coarse), newLattice(lo, hi, 3*coarse)
+	a.cavity, a.outline = newLattice(lo, hi, 4*coarse), newLattice(lo, hi, 3*coarse)
 	a.fossa, a.cerebellum = newLattice(vec{-66, -102, -74}, vec{66, 10, 8}, 2.5*coarse), newLattice(vec{-66, -102, -74}, vec{66, 10, 8}, 2.5*coarse)
 	a.deep = newLattice(vec{-52, -62, -30}, vec{52, 62, 52}, 2.5*coarse)
 	a.ventricles = newLattice(vec{0, -90, -40}, vec{54, 62, 52}, 1.5*coarse)
@@ -99,26 +107,6 @@ func (a *anatomy) posteriorFossaShape(p vec) float64 {
 	return join(tent, ellipsoid(p, vec{0, -20, -26}, vec{20, 17, 27}), 8)
 }
 
-// canal is the spinal canal with the foramen magnum.
-func (a *anatomy) canal(p vec) float64 {
-	if p[2] > -18 {
-		return -reach
-	}
-	return canalPipe.near(p)
-}
-
-// cerebrum is the outer surface of the hemispheres, sulci not cut.
-func (a *anatomy) cerebrum(p vec, cavity, fossa float64) float64 {
-	// Fluid over the hemispheres is thicker above than at the base.
-	return min(cavity-1.2-0.8*min(max((p[2]+5)/25, 0), 1), -fossa-1.2)
-}
-
-// below is the depth in mm within the posterior fossa: its lattice, and beyond
-// it less the distance to it.
-func (a *anatomy) below(p vec) float64 {
-	return a.fossa.at(p) - max(p[2]-8, 0) - max(p[1]-10, 0)
-}
-
 // stemShape is midbrain, pons, medulla and cord.
 func (a *anatomy) stemShape(p vec) float64 {
 	m := mirrored(p)
@@ -144,26 +132,16 @@ func (a *anatomy) folia(p vec) float64 {
 	return math.Abs(cell-math.Round(cell)) * math.Pi / fissures * max(r, 4)
 }
 
-// fourthVentricle and the aqueduct.
-func (a *anatomy) fourthVentricle(p vec) float64 {
-	return max(ellipsoid(p, vec{0, -33, -28}, vec{6 * a.ventricle, 5 * a.ventricle, 10}),
-		aqueductPipe.at(p))
-}
-
 // ventriclesShape is the lateral and the third ventricle.
 func (a *anatomy) ventriclesShape(p vec) float64 {
 	m, s := mirrored(p), a.ventricle
 	if m[0] > 48 || p[2] > 46 || p[2] < -34 || p[1] > 56 || p[1] < -84 {
 		return -12
 	}
-	lateral := tube(m,
-		node{vec{10, 34, 10}, 3.0 * s}, node{vec{7.5, 22, 18}, 5.0 * s}, node{vec{7.5, 2, 23.5}, 4.8 * s},
-		node{vec{11, -20, 23}, 4.8 * s}, node{vec{22, -37, 14}, 6.0 * s}, node{vec{31, -26, -2}, 3.5 * s}, node{vec{30, -4, -16}, 2.2 * s})
-	occipital := tube(m, node{vec{22, -38, 13}, 5.2 * s}, node{vec{22, -58, 9}, 1.8 * s})
 	third := ellipsoid(p, vec{0, -6, 3}, vec{2.6 * s, 13, 9})
 	// Their bodies meet below the callosum and above the fornix.
 	body := meet(meet(ellipsoid(p, vec{0, 2, 14}, vec{5.5, 34, 19}), -a.callosumShape(p)-0.3, 2), p[2]-8-0.31*(28-p[1]), 4)
-	return max(join(join(lateral, occipital, 3), body, 3), third)
+	return max(join(join(a.lateral.at(m), a.occipital.at(m), 3), body, 3), third)
 }
 
 // callosumShape arches over the ventricles from side to side.
@@ -179,38 +157,13 @@ func (a *anatomy) deepShape(p vec) float64 {
 	return join(join(ellipsoid(m, vec{16, -2, 9}, vec{20, 38, 21}), middle, 4), a.callosumShape(p), 4)
 }
 
-// fissure is the distance to the great fissures and their half width: between
-// the hemispheres, and along the Sylvian fissure with the insula.
-func (a *anatomy) fissure(p vec, surface, deep float64) (d, half float64) {
-	m := mirrored(p)
-	// Between the hemispheres, above and around the callosum. Below the falx the
-	// hemispheres touch along an uneven line.
-	d, half = m[0], gapHalf
-	if d < 20 {
-		if free := min((surface-falxDepth(p))/8, (-deep-1)/6, 1); free > 0 {
-			d = math.Abs(p[0] - 2*free*a.warpX.at(vec{17, p[1], p[2]}))
-			half -= 0.2 * free
-		}
-		if in := a.deep.at(vec{0, p[1], p[2]}); in > 0 {
-			d = hypot(d, in)
-		}
-	}
-	// The Sylvian fissure: a sheet inward to the insula, and the sheet over it.
-	y, z := m[1], m[2]
-	slope := -1 + 0.42*(6-y) + 2.5*a.warpX.at(p)
-	outward := max(40-m[0], 0, y-26, -26-y)
-	inlet := hypot(z-slope, outward)
-	insula := hypot(m[0]-39+0.012*(y-2)*(y-2)-0.02*(z-0.4*slope)*(z-0.4*slope)-1.5*a.warpY.at(p), max(math.Abs(z-0.4*slope)-11, 0, y-22, -16-y))
-	if sylvian := min(inlet, insula); sylvian < d {
-		return sylvian, sylvianHalf
-	}
-	return d, half
-}
-
 // outlineShape is the skin.
 func (a *anatomy) outlineShape(p vec, cavity float64) float64 {
 	m := mirrored(p)
 	scalp := cavity + 14.5
+	if p[2] > 60 || cavity > 12 {
+		return scalp // far from the face
+	}
 	face := join(ellipsoid(p, vec{0, 46, -52}, vec{58, 50, 66}), ellipsoid(p, vec{0, 74, -88}, vec{27, 25, 24}), 18)
 	nose := nosePipe.at(p)
 	nostril := ellipsoid(m, vec{9, 103, -54}, vec{8, 9, 7})

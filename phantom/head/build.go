@@ -7,7 +7,6 @@ import (
 	"fmt"
 	"math"
 	"slices"
-	"sync/atomic"
 
 	"golang.org/x/sync/errgroup"
 
@@ -132,107 +131,6 @@ func (h *Head) Labels() *maps.Volume {
 		}
 	}
 	return out
-}
-
-// fill samples every voxel, slices in parallel.
-func fill(ctx context.Context, m *maps.Mixture, an *anatomy, progress func(done, total int)) error {
-	var done atomic.Int64
-	return parallelErr(ctx, m.Grid.Size[2], func(k int) error {
-		s := newSampler(m.Grid, an)
-		err := m.Fill(k, func(i, j int, dst []maps.Part) []maps.Part { return s.voxel([3]int{i, j, k}, dst) })
-		if progress != nil {
-			progress(int(done.Add(1)), m.Grid.Size[2])
-		}
-		return err
-	})
-}
-
-// sampler takes the voxels of a slice, row by row, from the anatomy. Voxels
-// longer than 2.2 mm are sampled several times along that axis.
-type sampler struct {
-	grid   maps.Grid
-	an     *anatomy
-	points []maps.Vec // of the samples, in voxels from the centre
-	canvas canvas
-	sum    []float64
-	empty  int // voxels of the row before this one hold nothing
-}
-
-func newSampler(g maps.Grid, an *anatomy) *sampler {
-	s := &sampler{grid: g, an: an, sum: make([]float64, numTissues), canvas: canvas{shares: make([]float64, numTissues)}}
-	var n [3]int
-	for a := range 3 {
-		n[a] = max(1, int(math.Ceil(g.Spacing[a]/2.2)))
-		s.canvas.edge = max(s.canvas.edge, g.Spacing[a]/float64(n[a]))
-	}
-	for p := range n[0] * n[1] * n[2] {
-		at := [3]int{p % n[0], p / n[0] % n[1], p / n[0] / n[1]}
-		var v maps.Vec
-		for a := range 3 {
-			v[a] = (float64(at[a])+0.5)/float64(n[a]) - 0.5
-		}
-		s.points = append(s.points, v)
-	}
-	return s
-}
-
-// voxel appends the parts of a voxel to dst.
-func (s *sampler) voxel(at [3]int, dst []maps.Part) []maps.Part {
-	if at[0] == 0 {
-		s.empty = 0
-	}
-	if at[0] < s.empty {
-		return dst
-	}
-	if len(s.points) > 1 {
-		return s.several(at, dst)
-	}
-	c := &s.canvas
-	s.skip(at[0], s.sample(at, maps.Vec{}))
-	switch c.only {
-	case numTissues:
-		return dst
-	case mixed:
-		return maps.Apportion(dst, c.shares, 1)
-	}
-	return append(dst, maps.Part{Tissue: uint8(c.only), Fraction: maps.Whole})
-}
-
-// several appends the mean of the samples of a voxel.
-func (s *sampler) several(at [3]int, dst []maps.Part) []maps.Part {
-	c := &s.canvas
-	clear(s.sum)
-	outside := math.Inf(1)
-	for _, p := range s.points {
-		outside = min(outside, s.sample(at, p))
-		switch {
-		case c.only == mixed:
-			for t, w := range c.shares {
-				s.sum[t] += w
-			}
-		case c.only < numTissues:
-			s.sum[c.only]++
-		}
-	}
-	s.skip(at[0], outside)
-	return maps.Apportion(dst, s.sum, float64(len(s.points)))
-}
-
-// sample paints the canvas at a point of a voxel and returns how far outside
-// the head it lies in mm.
-func (s *sampler) sample(at [3]int, p maps.Vec) float64 {
-	for a := range 3 {
-		p[a] += float64(at[a])
-	}
-	return s.an.sample(s.grid.World(p), &s.canvas)
-}
-
-// skip notes that, far from the skin, nothing can follow along the row for half
-// that distance: the distances of shapes are exact only near their surface.
-func (s *sampler) skip(i int, outside float64) {
-	if outside > 4 {
-		s.empty = i + int(outside/2/s.grid.Spacing[0])
-	}
 }
 
 // texture is the smooth unevenness of every tissue.

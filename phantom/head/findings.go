@@ -34,7 +34,8 @@ type Finding struct {
 
 // lesion paints one finding over the brain.
 type lesion interface {
-	paint(a *anatomy, p vec, c *canvas)
+	near(p vec, margin float64) bool // may something be painted within margin mm of p?
+	paint(at *place, c *canvas)
 }
 
 // request is a finding asked for: a name, and a place in anatomical mm if one
@@ -109,18 +110,9 @@ var brainTissues = []tissue{cortex, whiteMatter, caudate, putamen, pallidum, tha
 
 // tissueAt is the tissue that fills most of a point.
 func (a *anatomy) tissueAt(p vec) tissue {
-	c := canvas{shares: make([]float64, numTissues), edge: 0.5}
-	a.sampleModel(p, &c)
-	if c.only != mixed {
-		return c.only
-	}
-	best := tissue(0)
-	for t, f := range c.shares {
-		if f > c.shares[best] {
-			best = tissue(t)
-		}
-	}
-	return best
+	b := newBrush(a, 0.5)
+	b.paint(p, everyLayer)
+	return b.most()
 }
 
 func newLesion(q request, r *rand.Rand, a *anatomy) (lesion, error) {
@@ -191,40 +183,6 @@ func newLesion(q request, r *rand.Rand, a *anatomy) (lesion, error) {
 	return nil, fmt.Errorf("no dura in its direction")
 }
 
-// share is how much of the sample the given tissues fill.
-func (c *canvas) share(ts ...tissue) float64 {
-	if c.only != mixed {
-		if slices.Contains(ts, c.only) {
-			return 1
-		}
-		return 0
-	}
-	var sum float64
-	for _, t := range ts {
-		sum += c.shares[t]
-	}
-	return sum
-}
-
-// replace turns tissues into others within a shape.
-func (c *canvas) replace(d float64, pairs ...[2]tissue) {
-	f := min(max(d/c.edge+0.5, 0), 1)
-	if f == 0 {
-		return
-	}
-	for _, p := range pairs {
-		switch {
-		case c.only == p[0] && f == 1:
-			c.only = p[1]
-		case c.only == p[0] || c.only == mixed:
-			c.mix()
-			moved := f * c.shares[p[0]]
-			c.shares[p[0]] -= moved
-			c.shares[p[1]] += moved
-		}
-	}
-}
-
 // all pairs every tissue of the brain, and fluid, with one that takes its place.
 func all(to tissue, more ...tissue) [][2]tissue {
 	var out [][2]tissue
@@ -234,14 +192,23 @@ func all(to tissue, more ...tissue) [][2]tissue {
 	return out
 }
 
+// close says whether p lies within margin mm of a ball.
+func close(p, centre vec, r, margin float64) bool { return length(sub(p, centre)) < r+margin }
+
 type blobs struct{ at, r []vec }
 
-func (b blobs) paint(_ *anatomy, p vec, c *canvas) {
-	if c.share(whiteMatter) == 0 {
-		return
-	}
+func (b blobs) near(p vec, margin float64) bool {
 	for i := range b.at {
-		if d := blob(p, b.at[i], b.r[i]); d > -clearance {
+		if close(p, b.at[i], b.r[i][0], margin) {
+			return true
+		}
+	}
+	return false
+}
+
+func (b blobs) paint(at *place, c *canvas) {
+	for i := range b.at {
+		if d := blob(at.p, b.at[i], b.r[i]); d > -clearance {
 			t := plaque
 			if i%3 == 0 {
 				t = enhancingPlaque
@@ -254,12 +221,16 @@ func (b blobs) paint(_ *anatomy, p vec, c *canvas) {
 // territory is a wedge of brain with an uneven border.
 type territory struct{ centre, r vec }
 
-func (t territory) paint(a *anatomy, p vec, c *canvas) {
-	d := blob(p, t.centre, t.r)
+func (t territory) near(p vec, margin float64) bool {
+	return close(p, t.centre, max(t.r[0], t.r[1], t.r[2])+5, margin)
+}
+
+func (t territory) paint(at *place, c *canvas) {
+	d := blob(at.p, t.centre, t.r)
 	if d < -5 {
 		return
 	}
-	d += 2 * a.warpY.at(vec{p[0] * 2, p[1] * 2, p[2] * 2})
+	d += 2 * at.a.warpY.at(vec{at.p[0] * 2, at.p[1] * 2, at.p[2] * 2})
 	c.replace(d, [2]tissue{whiteMatter, infarctWhite}, [2]tissue{cortex, infarctGrey})
 }
 
@@ -268,15 +239,17 @@ type tumour struct {
 	r      float64
 }
 
-func (t tumour) paint(a *anatomy, p vec, c *canvas) {
-	d := t.r - length(sub(p, t.centre))
+func (t tumour) near(p vec, margin float64) bool { return close(p, t.centre, t.r+18, margin) }
+
+func (t tumour) paint(at *place, c *canvas) {
+	d := t.r - length(sub(at.p, t.centre))
 	if d < -18 {
 		return
 	}
-	d += 1.6 * a.warpX.at(vec{p[0] * 2, p[1] * 2, p[2] * 2})
+	d += 1.6 * at.a.warpX.at(vec{at.p[0] * 2, at.p[1] * 2, at.p[2] * 2})
 	// Oedema follows the white matter; the rim takes up contrast agent, what is
 	// dead within does not.
-	c.replace(d+8+3*a.warpY.at(p), [2]tissue{whiteMatter, oedema})
+	c.replace(d+8+3*at.a.warpY.at(at.p), [2]tissue{whiteMatter, oedema})
 	c.replace(d, all(massRim, oedema, csf)...)
 	c.replace(d-0.22*t.r, [2]tissue{massRim, massCore})
 	c.replace(d-0.5*t.r, [2]tissue{massCore, necrosis})
@@ -287,8 +260,10 @@ type hole struct {
 	r      float64
 }
 
-func (h hole) paint(_ *anatomy, p vec, c *canvas) {
-	c.replace(h.r-length(sub(p, h.centre)), all(lacune)...)
+func (h hole) near(p vec, margin float64) bool { return close(p, h.centre, h.r+2, margin) }
+
+func (h hole) paint(at *place, c *canvas) {
+	c.replace(h.r-length(sub(at.p, h.centre)), all(lacune)...)
 }
 
 // specks are small spheres.
@@ -297,9 +272,18 @@ type specks struct {
 	r  []float64
 }
 
-func (s specks) paint(_ *anatomy, p vec, c *canvas) {
+func (s specks) near(p vec, margin float64) bool {
 	for i := range s.at {
-		if d := s.r[i] - length(sub(p, s.at[i])); d > -2 {
+		if close(p, s.at[i], s.r[i]+2, margin) {
+			return true
+		}
+	}
+	return false
+}
+
+func (s specks) paint(at *place, c *canvas) {
+	for i := range s.at {
+		if d := s.r[i] - length(sub(at.p, s.at[i])); d > -2 {
 			c.replace(d, all(microBleed)...)
 		}
 	}
@@ -311,12 +295,14 @@ type attached struct {
 	r      float64
 }
 
-func (g attached) paint(a *anatomy, p vec, c *canvas) {
-	d := g.r - length(sub(p, g.centre))
+func (g attached) near(p vec, margin float64) bool { return close(p, g.centre, g.r+4, margin) }
+
+func (g attached) paint(at *place, c *canvas) {
+	d := g.r - length(sub(at.p, g.centre))
 	if d < -4 {
 		return
 	}
-	d = min(d+1.2*a.warpX.at(vec{p[0] * 2, p[1] * 2, p[2] * 2}), a.cavity.at(p))
+	d = min(d+1.2*at.a.warpX.at(vec{at.p[0] * 2, at.p[1] * 2, at.p[2] * 2}), at.cavity())
 	c.replace(d+0.8, all(csf)...)
 	c.replace(d, [2]tissue{csf, meningioma})
 }

@@ -24,15 +24,16 @@ const (
 // sulci, midline and base included, with soft edges: sheets that follow its
 // gradient run inward everywhere.
 func (a *anatomy) hemisphereShape(m vec) float64 {
-	return meet(meet(a.cavity.at(m)-1.5, m[0], 26), -a.below(m)-1, 18)
+	at := place{a: a, p: m, m: m}
+	return meet(meet(a.cavity.at(m)-1.5, m[0], 26), -at.below()-1, 18)
 }
 
 // fold is the function whose zero surfaces are the sulci.
 func (a *anatomy) fold(p vec) float64 {
-	if a.cavity.at(p) < -4 {
-		return 1 // no brain there
-	}
 	m := mirrored(p)
+	if a.cavity.at(p) < -4 || a.hemisphere.at(m) < -6 || a.deep.at(p) > 8 {
+		return 1 // no cortex there
+	}
 	depth := min(max(a.hemisphere.at(m), 0), 30)
 	// Depth is compressed, so that the sheets run inward from the surface instead
 	// of across it: the field is taken nearer to the surface.
@@ -60,16 +61,48 @@ func (a *anatomy) fold(p vec) float64 {
 	return a.folds.at(q)
 }
 
-// sulcus is the distance from p to the nearest sulcus in mm. A sulcus ends some
-// way below the surface and before the deep part.
-func (a *anatomy) sulcus(p, m vec, surface, fossa, deep float64) float64 {
+// sulcus is the distance to the nearest sulcus in mm. A sulcus ends some way
+// below the surface, a survey's slack further down, and before the deep part.
+func (at *place) sulcus(surface, slack float64) float64 {
+	a, m := at.a, at.m
 	depth := min(surface, max(m[0], a.hemisphere.at(m)+1))
-	uneven := a.warpX.at(vec{p[1], p[2], p[0]})
+	uneven := a.warpX.at(vec{at.p[1], at.p[2], at.p[0]})
 	// Those of the outer surface are deep, those of the medial wall and the base
 	// shallow.
-	outer := min(max((min(m[0], -fossa)-surface)/16+0.4, 0), 1)
+	outer := min(max((min(m[0], -at.below())-surface)/16+0.4, 0), 1)
 	bottom := outer*min(max(outerDepth+outerVary*uneven, 8), 28) + (1-outer)*min(max(innerDepth+innerVary*uneven, 5), 16)
-	return hypot(a.sulci.at(p), max(depth-bottom, deep+4, 0))
+	return hypot(a.sulci.at(at.p), max(depth-bottom-slack, at.core()+4-slack, 0))
+}
+
+// fissure is the distance to the great fissures and their half width: between
+// the hemispheres, and along the Sylvian fissure with the insula.
+func (at *place) fissure(surface, slack float64) (d, half float64) {
+	a, p, m, deep := at.a, at.p, at.m, at.core()
+	// Between the hemispheres, above and around the callosum. Below the falx the
+	// hemispheres touch along an uneven line.
+	d, half = m[0], gapHalf
+	if d < 20 {
+		if free := min((surface-falxDepth(p))/8, (-deep-1)/6, 1); free > 0 {
+			d = math.Abs(p[0] - 2*free*a.warpX.at(vec{17, p[1], p[2]}))
+			half -= 0.2 * free
+		}
+		if in := a.deep.at(vec{0, p[1], p[2]}); in > 0 {
+			d = hypot(d, in)
+		}
+	}
+	// The Sylvian fissure: a sheet inward to the insula, and the sheet over it.
+	if far := 12 + slack; m[0] < 20-far || math.Abs(m[1]) > 26+far || m[2] > 20+far || m[2] < -20-far {
+		return d, half
+	}
+	y, z := m[1], m[2]
+	slope := -1 + 0.42*(6-y) + 2.5*a.warpX.at(p)
+	outward := max(40-m[0], 0, y-26, -26-y)
+	inlet := hypot(z-slope, outward)
+	insula := hypot(m[0]-39+0.012*(y-2)*(y-2)-0.02*(z-0.4*slope)*(z-0.4*slope)-1.5*a.warpY.at(p), max(math.Abs(z-0.4*slope)-11, 0, y-22, -16-y))
+	if sylvian := min(inlet, insula); sylvian < d {
+		return sylvian, sylvianHalf
+	}
+	return d, half
 }
 
 // falxDepth is how far the falx hangs down from the vault in mm: a sickle, wide

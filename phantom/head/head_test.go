@@ -174,12 +174,6 @@ func TestBuildRefuses(t *testing.T) {
 	}
 }
 
-func BenchmarkBuild(b *testing.B) {
-	for b.Loop() {
-		build(b, Spec{})
-	}
-}
-
 // A finding goes where it is told, and nowhere outside the brain; its label
 // image counts its volume.
 func TestPlacedFindings(t *testing.T) {

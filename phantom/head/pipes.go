@@ -25,10 +25,18 @@ var (
 	caudatePipe     = newPipe(node{vec{13, 24, 9}, 6}, node{vec{15, 12, 17}, 5}, node{vec{18, -8, 24}, 3.2}, node{vec{24, -26, 21}, 2})
 	hippocampusPipe = newPipe(node{vec{25, -4, -18}, 5}, node{vec{27, -22, -10}, 4.2}, node{vec{24, -32, -2}, 3})
 	peduncle        = newPipe(node{vec{9, -20, -27}, 7}, node{vec{20, -44, -32}, 7}) // from the pons to the cerebellum
+	opticNervePipe  = newPipe(node{vec{4, 14, -10}, 2.2}, node{vec{10, 26, -14}, 2}, node{vec{32, 58, -20}, 2.2})
 	orbitPipe       = newPipe(node{vec{11, 28, -15}, 4}, node{vec{31, 70, -21}, 18})
 	sigmoidPipe     = newPipe(node{vec{50, -44, -25}, 3.4}, node{vec{46, -34, -40}, 3.4}, node{vec{34, -18, -50}, 3.6})
 	substantiaPipe  = newPipe(node{vec{3.5, -9.5, -8.5}, 1.5}, node{vec{8, -13, -8}, 1.9}, node{vec{11, -18, -7}, 1.4})
 	basilarPipe     = newPipe(node{vec{0, -2.2, -16}, 1.8}, node{vec{0, -3, -36}, 1.9})
 	anteriorPipe    = newPipe(node{vec{11, 12, -12}, 1.6}, node{vec{2.6, 17, -9}, 1.3}, node{vec{2.4, 34, 0}, 1.2}, node{vec{2.4, 46, 14}, 1.1}, node{vec{2.4, 38, 31}, 1})
 	carotidPipe     = newPipe(node{vec{12, 20, -28}, 2.5}, node{vec{11, 12, -12}, 2.3}, node{vec{22, 8, -9}, 1.6}, node{vec{38, 4, -6}, 1.3})
+
+	eyeMuscles = []*pipe{eyeMuscle(43, -20), eyeMuscle(21, -20), eyeMuscle(32, -9.5), eyeMuscle(32, -30.5)}
 )
+
+// eyeMuscle runs from the tip of the orbit to the side of the eye.
+func eyeMuscle(x, z float64) *pipe {
+	return newPipe(node{vec{10, 26, -14}, 1.5}, node{vec{x, 62, z}, 2.4})
+}

@@ -9,12 +9,12 @@ import (
 // waves of random direction and phase with wavelengths in a band, mean 0 and
 // standard deviation 1, stored on a periodic lattice for speed.
 type randomField struct {
-	step float64 // mm
-	v    []float32
+	perMM float64 // lattice points in a mm
+	v     []float32
 }
 
 const (
-	fieldSize  = 72 // lattice points along each side
+	fieldSize  = 64 // lattice points along each side, a power of two
 	fieldWaves = 90
 )
 
@@ -23,7 +23,7 @@ const (
 // without a seam. Different streams of one seed are independent.
 func newRandomField(seed uint64, stream uint64, lo, hi, step float64) *randomField {
 	r := rand.New(rand.NewPCG(seed, stream))
-	f := &randomField{step: step, v: make([]float32, fieldSize*fieldSize*fieldSize)}
+	f := &randomField{perMM: 1 / step, v: make([]float32, fieldSize*fieldSize*fieldSize)}
 	period := step * fieldSize
 	type wave struct {
 		k    [3]int // turns per period
@@ -94,24 +94,24 @@ func newRandomField(seed uint64, stream uint64, lo, hi, step float64) *randomFie
 
 // at returns the field at p mm, by trilinear interpolation.
 func (f *randomField) at(p vec) float64 {
-	var i0, i1 [3]int
-	var t [3]float64
-	for a := range 3 {
-		x := p[a] / f.step
-		x -= fieldSize * math.Floor(x/fieldSize)
-		i0[a] = min(int(x), fieldSize-1)
-		t[a] = x - float64(i0[a])
-		if i1[a] = i0[a] + 1; i1[a] == fieldSize {
-			i1[a] = 0
-		}
+	x0, x1, x := f.cell(p[0])
+	y0, y1, y := f.cell(p[1])
+	z0, z1, z := f.cell(p[2])
+	y0, y1 = y0*fieldSize, y1*fieldSize
+	row := func(n int) float64 {
+		lo, hi := float64(f.v[n+x0]), float64(f.v[n+x1])
+		return lo + x*(hi-lo)
 	}
-	row := func(y, z int) float64 {
-		base := (z*fieldSize + y) * fieldSize
-		lo, hi := float64(f.v[base+i0[0]]), float64(f.v[base+i1[0]])
-		return lo + t[0]*(hi-lo)
-	}
-	a, b := row(i0[1], i0[2]), row(i1[1], i0[2])
-	c, d := row(i0[1], i1[2]), row(i1[1], i1[2])
-	ab, cd := a+t[1]*(b-a), c+t[1]*(d-c)
-	return ab + t[2]*(cd-ab)
+	near, far := z0*fieldSize*fieldSize, z1*fieldSize*fieldSize
+	a, b := row(near+y0), row(near+y1)
+	c, d := row(far+y0), row(far+y1)
+	ab, cd := a+y*(b-a), c+y*(d-c)
+	return ab + z*(cd-ab)
+}
+
+// cell is the lattice points around x mm and how far x lies from the first.
+func (f *randomField) cell(x float64) (lo, hi int, t float64) {
+	x = x*f.perMM + 1024*fieldSize // never negative
+	i := int(x)
+	return i & (fieldSize - 1), (i + 1) & (fieldSize - 1), x - float64(i)
 }

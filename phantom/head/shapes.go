@@ -20,15 +20,16 @@ func ellipsoid(p, c, r vec) float64 {
 	u := vec{d[0] / r[0], d[1] / r[1], d[2] / r[2]}
 	k0 := length(u)
 	k1 := length(vec{u[0] / r[0], u[1] / r[1], u[2] / r[2]})
-	if k1 == 0 {
-		return min(r[0], r[1], r[2])
+	if k0 >= 1 {
+		return k0 * (1 - k0) / k1
 	}
-	return k0 * (1 - k0) / k1
+	// That grows too fast inward along the long axes.
+	return (1 - k0) * min(k0/max(k1, 1e-9), 1.3*min(r[0], r[1], r[2]))
 }
 
 // clearance is how far outside a shape painting no longer needs to know the
 // distance, in mm.
-const clearance = 6
+const clearance = 10
 
 // blob is an ellipsoid to be painted: -clearance far outside.
 func blob(p, c, r vec) float64 {
@@ -46,22 +47,35 @@ type node struct {
 	r  float64
 }
 
-// pipe is a tube with the box around it, so that points far away cost little.
+// pipe is a chain of cones with round ends, and the box around it, so that
+// points far away cost little.
 type pipe struct {
-	nodes  []node
+	cones  []cone
 	lo, hi vec
+}
+
+// cone is the part of a pipe between two nodes.
+type cone struct {
+	from, along vec     // mm
+	r, widen    float64 // radius at its start, and how much it grows to its end
+	inverse     float64 // 1 / squared length
 }
 
 // reach is how far around a pipe its distance is exact, in mm: more than any
 // fillet that pipes take part in.
 const reach = 26
 
-func newPipe(nodes ...node) pipe {
-	p := pipe{nodes, nodes[0].at, nodes[0].at}
-	for _, n := range nodes {
+func newPipe(nodes ...node) *pipe {
+	p := &pipe{lo: nodes[0].at, hi: nodes[0].at}
+	for i, n := range nodes {
 		for a := range 3 {
 			p.lo[a] = min(p.lo[a], n.at[a]-n.r)
 			p.hi[a] = max(p.hi[a], n.at[a]+n.r)
+		}
+		if i > 0 {
+			from := nodes[i-1]
+			along := sub(n.at, from.at)
+			p.cones = append(p.cones, cone{from.at, along, from.r, n.r - from.r, 1 / (along[0]*along[0] + along[1]*along[1] + along[2]*along[2])})
 		}
 	}
 	return p
@@ -69,31 +83,30 @@ func newPipe(nodes ...node) pipe {
 
 // at returns the signed distance of q; beyond reach of the box it is only known
 // to be below -reach.
-func (p pipe) at(q vec) float64 { return p.within(q, reach) }
+func (p *pipe) at(q vec) float64 { return p.within(q, reach) }
 
 // near is at for painting: -clearance far outside.
-func (p pipe) near(q vec) float64 { return p.within(q, clearance) }
+func (p *pipe) near(q vec) float64 {
+	if q[0] < p.lo[0]-clearance || q[0] > p.hi[0]+clearance {
+		return -clearance
+	}
+	return p.within(q, clearance)
+}
 
 // within is at with a reach of its own.
-func (p pipe) within(q vec, reach float64) float64 {
+func (p *pipe) within(q vec, reach float64) float64 {
 	for a := range 3 {
 		if q[a] < p.lo[a]-reach || q[a] > p.hi[a]+reach {
 			return -reach
 		}
 	}
-	return tube(q, p.nodes...)
-}
-
-// tube is a chain of cones with round ends.
-func tube(p vec, nodes ...node) float64 {
 	best := math.Inf(-1)
-	for i := 1; i < len(nodes); i++ {
-		a, b := nodes[i-1], nodes[i]
-		ab, ap := sub(b.at, a.at), sub(p, a.at)
-		h := (ap[0]*ab[0] + ap[1]*ab[1] + ap[2]*ab[2]) / (ab[0]*ab[0] + ab[1]*ab[1] + ab[2]*ab[2])
-		h = min(max(h, 0), 1)
-		q := vec{ap[0] - h*ab[0], ap[1] - h*ab[1], ap[2] - h*ab[2]}
-		best = max(best, a.r+h*(b.r-a.r)-length(q))
+	for i := range p.cones {
+		c := &p.cones[i]
+		d := sub(q, c.from)
+		h := min(max((d[0]*c.along[0]+d[1]*c.along[1]+d[2]*c.along[2])*c.inverse, 0), 1)
+		d = vec{d[0] - h*c.along[0], d[1] - h*c.along[1], d[2] - h*c.along[2]}
+		best = max(best, c.r+h*c.widen-length(d))
 	}
 	return best
 }

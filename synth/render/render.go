@@ -14,7 +14,7 @@ import (
 
 // EngineVersion enters every identity and file. It is bumped whenever any
 // output bit changes; a golden test fails otherwise.
-const EngineVersion = "2"
+const EngineVersion = "3"
 
 // Series returns the series of scan number index (from 0) of a checked
 // protocol, one per image kind, over the whole volume. Pixels are made when

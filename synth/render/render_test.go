@@ -336,6 +336,7 @@ func TestBitsDoNotDependOnCores(t *testing.T) {
 var golden = map[string]string{
 	"1": "b376af32c5d59e9b010119314576e4eac573795c25f885f77368555a73da8b87",
 	"2": "b376af32c5d59e9b010119314576e4eac573795c25f885f77368555a73da8b87",
+	"3": "b376af32c5d59e9b010119314576e4eac573795c25f885f77368555a73da8b87",
 }
 
 func TestGoldenBits(t *testing.T) {

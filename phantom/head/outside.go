@@ -1,0 +1,120 @@
+package head
+
+import "math"
+
+// Layers outside the dura.
+
+// scalp paints skin and fat.
+func scalp(at *place, c *canvas) {
+	c.paint(skin, at.skin())
+	c.within(fat, at.skin()-2, skin)
+}
+
+func temples(at *place, c *canvas) {
+	c.paint(muscle, min(at.skin()-4, blob(at.m, vec{68, 28, -8}, vec{13, 30, 36})))
+}
+
+// muscles paints those of neck, face and tongue; seams of fat part their
+// bellies.
+func muscles(at *place, c *canvas) {
+	p := at.p
+	neck := min(at.skin()-5, -30-p[2]-0.4*p[1])
+	cheek := min(at.skin()-7, blob(at.m, vec{46, 34, -66}, vec{14, 24, 34}))
+	tongue := blob(p, vec{0, 54, -80}, vec{24, 30, 19})
+	if max(neck, cheek, tongue) <= -c.edge {
+		return
+	}
+	grain := at.a.marbling.at(p)
+	seam := 3*math.Abs(at.a.warpX.at(p)) - 0.3
+	c.paint(muscle, c.steep(min(max(min(neck, at.skin()-6-0.5*grain), cheek), seam)))
+	c.paint(muscle, min(tongue, c.steep(c.steep(2.2-grain))))
+}
+
+func neckVessels(at *place, c *canvas) {
+	c.paint(venousBlood, jugularPipe.near(at.m))
+	c.paint(arterialBlood, carotidNeckPipe.near(at.m))
+}
+
+// skull paints the vault with its diploe.
+func skull(at *place, c *canvas) {
+	p, cavity := at.p, at.cavity()
+	thick := 7.2 + 0.8*at.a.warpX.at(vec{p[0] / 2, p[1] / 2, p[2] / 2})
+	c.paint(bone, min(cavity+thick, p[2]+62))
+	c.paint(marrow, min(cavity+thick-1.8, -2.0-cavity, p[2]+30))
+}
+
+// skullBase paints clivus and petrous bones.
+func skullBase(at *place, c *canvas) {
+	clivus := blob(at.p, vec{0, 14, -38}, vec{26, 24, 13})
+	c.paint(bone, clivus)
+	c.paint(marrow, min(clivus-3, 9-math.Abs(at.p[1]-6)))
+	c.paint(bone, petrousPipe.near(at.m))
+}
+
+// spine paints vertebrae, discs and arches.
+func spine(at *place, c *canvas) {
+	body := spinePipe.near(at.p)
+	fromMiddle := math.Abs(math.Mod(at.p[2]+1000, 18) - 9) // one vertebra in 18 mm
+	disc := fromMiddle - 7.2
+	c.paint(bone, body)
+	c.paint(marrow, min(body-1.4, -disc))
+	c.paint(dura, min(body-1, disc))
+	c.paint(bone, min(archPipe.near(at.p), 5-fromMiddle))
+}
+
+// jaws paints the jaws with the teeth, the cheekbones and the forehead.
+func jaws(at *place, c *canvas) {
+	jaw := jawPipe.near(at.m)
+	c.paint(bone, jaw)
+	c.paint(marrow, jaw-2.4)
+	palate := min(blob(at.p, vec{0, 56, -62}, vec{27, 36, 4.5}), at.p[1]-24)
+	c.paint(bone, max(palate, teethPipe.near(at.m)))
+	cheekbone := cheekbonePipe.near(at.m)
+	c.paint(bone, cheekbone)
+	c.paint(marrow, cheekbone-2.5)
+	c.paint(bone, blob(at.p, vec{0, 84, -10}, vec{26, 7, 10}))
+}
+
+// orbits paints the eyes with their muscles and the optic nerves.
+func orbits(at *place, c *canvas) {
+	m := at.m
+	orbit := orbitPipe.near(m)
+	c.paint(bone, min(orbit+1.6, 73-m[1]))
+	c.paint(fat, min(orbit, 78-m[1]))
+	for i := range eyeMuscles {
+		c.paint(muscle, eyeMuscles[i].near(m))
+	}
+	c.paint(whiteMatter, opticNervePipe.near(m))
+	globe := blob(m, vec{32, 70, -20}, vec{12, 12.2, 12})
+	c.paint(dura, globe)
+	c.within(vitreous, globe-1.1, dura)
+	c.paint(lens, blob(m, vec{32, 78, -20}, vec{4.6, 2.3, 4.6}))
+}
+
+// mastoids paints the air cells behind the ears and the ear canals.
+func mastoids(at *place, c *canvas) {
+	if cells := blob(at.m, vec{57, -24, -36}, vec{11, 13, 15}); cells > -c.edge && !c.unsure() {
+		c.air(min(cells, 0.9-1.6*at.a.marbling.at(at.p)))
+	}
+	c.air(earPipe.near(at.m))
+}
+
+// sinuses paints those of forehead, cheeks, sphenoid and ethmoid bone.
+func sinuses(at *place, c *canvas) {
+	m := at.m
+	c.air(min(m[0]-0.6, max( // parted by a septum
+		blob(m, vec{13, 84, 2}, vec{12, 5.5, 11}),
+		blob(m, vec{27, 54, -46}, vec{13.5, 16, 14}),
+		blob(m, vec{8, 24, -30}, vec{9, 11, 9}))))
+	if cells := blob(m, vec{7, 56, -24}, vec{7, 20, 9}); cells > -c.edge && !c.unsure() {
+		c.air(min(cells, 1.3-1.4*at.a.marbling.at(at.p)))
+	}
+}
+
+// nose paints its cavity, the throat and the mouth.
+func nose(at *place, c *canvas) {
+	c.air(min(blob(at.p, vec{0, 62, -44}, vec{11, 34, 15}), at.m[0]-1.1))
+	c.paint(mucosa, max(turbinateLow.near(at.m), turbinateMid.near(at.m)))
+	c.air(throatPipe.near(at.p))
+	c.air(blob(at.p, vec{0, 62, -63}, vec{17, 22, 3.2}))
+}
