@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"slices"
 
 	"github.com/klauspost/compress/gzip"
 
@@ -30,7 +31,8 @@ type Writer struct {
 	opt   Options
 	order binary.ByteOrder
 	left  int
-	tmp   [8]byte
+	limit [2]float64 // of the stored type
+	bytes []byte     // of some values
 }
 
 // NewWriter writes the header of an image on g. Lengths are mm and times s; the
@@ -70,7 +72,7 @@ func NewWriter(w io.Writer, g maps.Grid, opt Options) (*Writer, error) {
 			return nil, fmt.Errorf("nifti: slope and intercept are outside the range of version 1: want 1e-45..3e38")
 		}
 	}
-	out := &Writer{opt: opt, order: binary.LittleEndian, left: g.Len()}
+	out := &Writer{opt: opt, order: binary.LittleEndian, left: g.Len(), limit: limits[opt.Type]}
 	if opt.BigEndian {
 		out.order = binary.BigEndian
 	}
@@ -90,18 +92,28 @@ func (w *Writer) Write(values []float32) error {
 		return fmt.Errorf("nifti: %d values more than the grid holds", len(values)-w.left)
 	}
 	w.left -= len(values)
+	const batch = 4096
 	size := w.opt.Type.size()
-	for _, v := range values {
-		x := float64(v)
-		if w.opt.Slope != 1 || w.opt.Inter != 0 {
-			x = (x - w.opt.Inter) / w.opt.Slope
+	for len(values) > 0 {
+		n := min(len(values), batch)
+		w.bytes = slices.Grow(w.bytes[:0], n*size)[:n*size]
+		clear(w.bytes)
+		for i, v := range values[:n] {
+			if math.Float32bits(v) == 0 && w.opt.Inter == 0 {
+				continue // most of an image of one tissue
+			}
+			x := float64(v)
+			if w.opt.Slope != 1 || w.opt.Inter != 0 {
+				x = (x - w.opt.Inter) / w.opt.Slope
+			}
+			if err := put(w.order, w.opt.Type, w.limit, w.bytes[i*size:], x); err != nil {
+				return err
+			}
 		}
-		if err := put(w.order, w.opt.Type, w.tmp[:], x); err != nil {
+		if _, err := w.buf.Write(w.bytes); err != nil {
 			return err
 		}
-		if _, err := w.buf.Write(w.tmp[:size]); err != nil {
-			return err
-		}
+		values = values[n:]
 	}
 	return nil
 }
@@ -141,7 +153,7 @@ var limits = map[Type][2]float64{
 }
 
 // put encodes one number.
-func put(o binary.ByteOrder, t Type, b []byte, x float64) error {
+func put(o binary.ByteOrder, t Type, limit [2]float64, b []byte, x float64) error {
 	switch t {
 	case Float32:
 		o.PutUint32(b, math.Float32bits(float32(x)))
@@ -151,8 +163,8 @@ func put(o binary.ByteOrder, t Type, b []byte, x float64) error {
 		return nil
 	}
 	x = math.Round(x)
-	if lim := limits[t]; !(x >= lim[0] && x <= lim[1]) {
-		return fmt.Errorf("nifti: value %g: want %g..%g for the stored type", x, lim[0], lim[1])
+	if !(x >= limit[0] && x <= limit[1]) {
+		return fmt.Errorf("nifti: value %g: want %g..%g for the stored type", x, limit[0], limit[1])
 	}
 	switch t.size() {
 	case 1:

@@ -6,8 +6,12 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"runtime"
 	"slices"
 	"strings"
+	"sync/atomic"
+
+	"golang.org/x/sync/errgroup"
 
 	"voxelproof/export"
 	"voxelproof/maps"
@@ -109,19 +113,62 @@ func save(ctx context.Context, f *export.Folder, l *Loaded, p Progress) error {
 // mapStem is the name of a map's files without extension.
 func mapStem(q maps.Quantity) string { return "sub-synthetic_" + bids.Suffix(q) }
 
+func mapOptions(q maps.Quantity) nifti.Options {
+	return nifti.Options{Gzip: true, Descrip: "voxelproof " + q.String()}
+}
+
 // saveMap writes one map with its sidecar.
 func saveMap(f *export.Folder, q maps.Quantity, v *maps.Volume, set *maps.Set) error {
-	stem := mapStem(q)
-	err := f.Write(stem+".nii.gz", func(w io.Writer) error {
-		return nifti.Write(w, v, nifti.Options{Gzip: true, Descrip: "voxelproof " + q.String()})
-	})
+	err := f.Write(mapStem(q)+".nii.gz", func(w io.Writer) error { return nifti.Write(w, v, mapOptions(q)) })
 	if err != nil {
 		return err
 	}
-	return f.Write(stem+".json", func(w io.Writer) error {
+	return saveSidecar(f, q, set)
+}
+
+func saveSidecar(f *export.Folder, q maps.Quantity, set *maps.Set) error {
+	return f.Write(mapStem(q)+".json", func(w io.Writer) error {
 		_, err := w.Write(bids.MapSidecar(q, set.Field, set.Origin.Source))
 		return err
 	})
+}
+
+// image is one to be written slice by slice.
+type image struct {
+	file  string
+	opt   nifti.Options
+	slice func(k int, dst []float32)
+}
+
+// saveImages writes images on one grid, several at a time.
+func saveImages(ctx context.Context, f *export.Folder, g maps.Grid, images []image, progress func(done, total int)) error {
+	eg, ctx := errgroup.WithContext(ctx)
+	eg.SetLimit(runtime.GOMAXPROCS(0))
+	var done atomic.Int64
+	for _, m := range images {
+		eg.Go(func() error {
+			err := f.Write(m.file, func(w io.Writer) error {
+				out, err := nifti.NewWriter(w, g, m.opt)
+				if err != nil {
+					return err
+				}
+				slice := make([]float32, g.SliceLen())
+				for k := range g.Size[2] {
+					if err := ctx.Err(); err != nil {
+						return err
+					}
+					m.slice(k, slice)
+					if err := out.Write(slice); err != nil {
+						return err
+					}
+				}
+				return out.Close()
+			})
+			progress(int(done.Add(1)), len(images))
+			return err
+		})
+	}
+	return eg.Wait()
 }
 
 func saveMixture(ctx context.Context, f *export.Folder, l *Loaded, progress func(done, total int)) error {
@@ -130,48 +177,33 @@ func saveMixture(ctx context.Context, f *export.Folder, l *Loaded, progress func
 	var list bytes.Buffer
 	fmt.Fprintf(&list, "#source\t%s\n#field\t%g\n#person\t%s\ntissue\tfile\n", l.Set.Origin.Source, l.Set.Field, map[bool]string{true: "yes", false: "no"}[l.Set.Origin.Person])
 	var names []string
-	slice := make([]float32, g.SliceLen())
+	var images []image
 	for t, tissue := range m.Tissues {
 		if volumes[t] == 0 {
 			continue
 		}
-		if err := ctx.Err(); err != nil {
-			return err
-		}
-		progress(t, len(m.Tissues))
 		file := fmt.Sprintf("sub-synthetic_label-%02d_probseg.nii.gz", t+1)
 		fmt.Fprintf(&list, "%s\t%s\n", tissue.Name, file)
 		names = append(names, tissue.Name)
-		err := f.Write(file, func(w io.Writer) error {
+		images = append(images, image{
+			file: file,
 			// 16 bits hold a fraction exactly.
-			nw, err := nifti.NewWriter(w, g, nifti.Options{Type: nifti.Uint16, Slope: 1.0 / maps.Whole, Gzip: true, Descrip: "share of " + clip(tissue.Name, 60)})
-			if err != nil {
-				return err
-			}
-			for k := range g.Size[2] {
-				m.Fractions(k, t, slice)
-				if err := nw.Write(slice); err != nil {
-					return err
-				}
-			}
-			return nw.Close()
+			opt:   nifti.Options{Type: nifti.Uint16, Slope: 1.0 / maps.Whole, Gzip: true, Descrip: "share of " + clip(tissue.Name, 60)},
+			slice: func(k int, dst []float32) { m.Fractions(k, t, dst) },
 		})
-		if err != nil {
-			return err
-		}
 	}
-	fat := false
-	for _, n := range names {
-		fat = fat || n == "fat"
-	}
-	if !fat {
+	if !slices.Contains(names, "fat") {
 		names = append(names, "fat") // tissues with a share of fat refer to it
 	}
-	var table bytes.Buffer
+	var table, labels bytes.Buffer
 	if err := l.Table.Write(&table, names); err != nil {
 		return err
 	}
-	for name, data := range map[string][]byte{mixtureList: list.Bytes(), "tissues.txt": table.Bytes(), "findings.tsv": findingsTSV(l)} {
+	labels.WriteString("index\tname\n")
+	for i, t := range m.Tissues {
+		fmt.Fprintf(&labels, "%d\t%s\n", i+1, t.Name)
+	}
+	for name, data := range map[string][]byte{mixtureList: list.Bytes(), "tissues.txt": table.Bytes(), "findings.tsv": findingsTSV(l), "sub-synthetic_dseg.tsv": labels.Bytes()} {
 		if data == nil {
 			continue
 		}
@@ -193,62 +225,48 @@ func saveMixture(ctx context.Context, f *export.Folder, l *Loaded, progress func
 		}
 	}
 	if len(l.Findings) > 0 && l.labels != nil {
-		err := f.Write("findings.nii.gz", func(w io.Writer) error {
-			return nifti.Write(w, l.labels(), nifti.Options{Type: nifti.Uint8, Gzip: true, Descrip: "findings: n-th row of findings.tsv"})
-		})
-		if err != nil {
-			return err
-		}
+		v := l.labels()
+		images = append(images, image{"findings.nii.gz", nifti.Options{Type: nifti.Uint8, Gzip: true, Descrip: "findings: n-th row of findings.tsv"}, func(k int, dst []float32) { copy(dst, v.Slice(k)) }})
 	}
-	return saveDominant(f, l)
-}
-
-// saveDominant writes the label image with its list and the single-valued maps
-// of the tissue that fills most of each voxel.
-func saveDominant(f *export.Folder, l *Loaded) error {
-	m, g := l.Set.Mixture, l.Set.Grid
-	labels := make([]uint8, g.Len())
-	n := g.SliceLen()
-	for k := range g.Size[2] {
-		m.Dominant(k, labels[k*n:(k+1)*n])
-	}
-	v := maps.NewVolume(g)
-	fill := func(of func(maps.Tissue) float64) {
-		for i, l := range labels {
-			v.Data[i] = 0
-			if l > 0 {
-				v.Data[i] = float32(of(m.Tissues[l-1]))
-			}
-		}
-	}
-	for i, lab := range labels {
-		v.Data[i] = float32(lab)
-	}
-	err := f.Write("sub-synthetic_dseg.nii.gz", func(w io.Writer) error {
-		return nifti.Write(w, v, nifti.Options{Type: nifti.Uint8, Gzip: true, Descrip: "dominant tissue"})
-	})
+	dominant, err := dominantImages(f, l)
 	if err != nil {
 		return err
 	}
-	var b strings.Builder
-	b.WriteString("index\tname\n")
-	for i, t := range m.Tissues {
-		fmt.Fprintf(&b, "%d\t%s\n", i+1, t.Name)
+	return saveImages(ctx, f, g, append(images, dominant...), progress)
+}
+
+// dominantImages are the label image and the single-valued maps of the tissue
+// that fills most of each voxel; it writes the sidecars of the maps.
+func dominantImages(f *export.Folder, l *Loaded) ([]image, error) {
+	m := l.Set.Mixture
+	of := func(value func(label uint8) float32) func(k int, dst []float32) {
+		return func(k int, dst []float32) {
+			labels := make([]uint8, len(dst))
+			m.Dominant(k, labels)
+			for i, l := range labels {
+				dst[i] = value(l)
+			}
+		}
 	}
-	if err := f.Write("sub-synthetic_dseg.tsv", func(w io.Writer) error { _, err := io.WriteString(w, b.String()); return err }); err != nil {
-		return err
-	}
-	for q, of := range map[maps.Quantity]func(maps.Tissue) float64{
+	images := []image{{
+		"sub-synthetic_dseg.nii.gz", nifti.Options{Type: nifti.Uint8, Gzip: true, Descrip: "dominant tissue"},
+		of(func(l uint8) float32 { return float32(l) }),
+	}}
+	for q, value := range map[maps.Quantity]func(maps.Tissue) float64{
 		maps.T1: func(t maps.Tissue) float64 { return mostly(t).T1 }, maps.T2: func(t maps.Tissue) float64 { return mostly(t).T2 },
 		maps.T2Star: func(t maps.Tissue) float64 { return mostly(t).T2Star },
 		maps.PD:     func(t maps.Tissue) float64 { return t.PD },
 	} {
-		fill(of)
-		if err := saveMap(f, q, v, l.Set); err != nil {
-			return err
+		per := make([]float32, len(m.Tissues)+1) // void has none
+		for i, t := range m.Tissues {
+			per[i+1] = float32(value(t))
+		}
+		images = append(images, image{mapStem(q) + ".nii.gz", mapOptions(q), of(func(l uint8) float32 { return per[l] })})
+		if err := saveSidecar(f, q, l.Set); err != nil {
+			return nil, err
 		}
 	}
-	return nil
+	return images, nil
 }
 
 // mostly is the relaxation of the larger pool of a tissue.

@@ -2,7 +2,6 @@ package task
 
 import (
 	"context"
-	"errors"
 	"fmt"
 	"math"
 	"math/rand/v2"
@@ -86,19 +85,19 @@ func LoadProtocol(name string) (*synth.Protocol, []string, error) {
 	if name == "" {
 		return nil, nil, usagef("no protocol: want --protocol FILE or a name from %s", strings.Join(library.Names(), ", "))
 	}
-	data, err := readSmall(name)
-	switch {
-	case err == nil:
+	if info, err := os.Stat(name); err == nil && !info.IsDir() { // a folder does not hide the library
+		data, err := readSmall(name)
+		if err != nil {
+			return nil, nil, err
+		}
 		p, err := synth.ParseProtocol(data, name)
 		return p, []string{name}, err
-	case errors.Is(err, os.ErrNotExist):
-		if p, lerr := library.Get(name); lerr == nil {
-			return p, nil, nil
-		} else if !strings.ContainsAny(name, "./\\") {
-			return nil, nil, lerr
-		}
 	}
-	return nil, nil, err
+	p, err := library.Get(name)
+	if err != nil && strings.ContainsAny(name, "./\\") {
+		return nil, nil, fmt.Errorf("read %s: no such file: want a protocol file or a name from %s", name, strings.Join(library.Names(), ", "))
+	}
+	return p, nil, err
 }
 
 // Run renders and writes.

@@ -130,7 +130,7 @@ scans:
 var golden = map[string]string{
 	"1": "9e9c58605274e0ec73061983e19c3dfaafdb59d717a0db66c9d6a72bee8c130e",
 	"2": "d5c7f31573fdfa3f8ab769b90c7b17460bfab75bc65ab611962a07ee9fce931b",
-	"3": "8344ce06620dfe4433cd789313708d48c1af70979b043a45ad25e6acd59ae2ee",
+	"3": "bc13f94739742c8d072383c94a2f307da1ff0bb543eb235284ce649941086b6d",
 }
 
 func TestGoldenFiles(t *testing.T) {
