@@ -23,8 +23,8 @@ type anatomy struct {
 
 	// Large smooth shapes, and the distance to the sheets of the sulci, are
 	// sampled once: at every point of a picture they would cost most of the time.
-	cavity, outline, fossa, cerebellum, deep, sulci *lattice
-	hemisphere, ventricles, stem, callosum          *lattice // of the right side: their mirror images are the left
+	cavity, outline, fossa, cerebellum, deep, sulci   *lattice
+	hemisphere, say, side, ventricles, stem, callosum *lattice // of the right side: their mirror images are the left
 }
 
 // proportions draws those of a seed.
@@ -81,11 +81,17 @@ func newAnatomy(ctx context.Context, seed uint64, atrophy, edge float64) (*anato
 		f func(vec) float64
 	}{
 		{a.fossa, a.posteriorFossaShape}, {a.cavity, a.cavityShape}, {a.outline, func(p vec) float64 { return a.outlineShape(p, a.cavity.at(p)) }},
-		{a.cerebellum, a.cerebellumShape}, {a.ventricles, a.ventriclesShape}, {a.stem, a.stemShape}, {a.callosum, a.callosumShape}, {a.deep, a.deepShape}, {a.hemisphere, a.hemisphereShape}, {a.sulci, a.fold},
+		{a.cerebellum, a.cerebellumShape}, {a.ventricles, a.ventriclesShape}, {a.stem, a.stemShape}, {a.callosum, a.callosumShape}, {a.deep, a.deepShape}, {a.hemisphere, a.hemisphereShape},
 	} {
 		if err := l.l.fill(ctx, l.f); err != nil {
 			return nil, err
 		}
+	}
+	if err := a.name(ctx); err != nil {
+		return nil, err
+	}
+	if err := a.sulci.fill(ctx, a.fold); err != nil {
+		return nil, err
 	}
 	return a, a.sulci.signedDistance(ctx)
 }
@@ -103,7 +109,10 @@ func (a *anatomy) cavityShape(p vec) float64 {
 
 // posteriorFossaShape holds cerebellum and brain stem; its roof is the tentorium.
 func (a *anatomy) posteriorFossaShape(p vec) float64 {
-	tent := join(ellipsoid(mirrored(p), vec{16, -54, -33}, vec{38, 36, 25}), ellipsoid(p, vec{0, -52, -30}, vec{30, 33, 27}), 14)
+	m := mirrored(p)
+	tent := join(ellipsoid(m, vec{16, -54, -33}, vec{39, 37, 26}), ellipsoid(p, vec{0, -50, -28}, vec{30, 34, 36}), 14)
+	// The roof falls to the sides and to the back.
+	tent = meet(tent, (7-p[2]-0.55*m[0]-0.25*max(0, -40-p[1]))/1.17, 5)
 	return join(tent, ellipsoid(p, vec{0, -20, -26}, vec{20, 17, 27}), 8)
 }
 
@@ -119,17 +128,22 @@ func (a *anatomy) stemShape(p vec) float64 {
 // cerebellumShape is its outer surface, folia not cut.
 func (a *anatomy) cerebellumShape(p vec) float64 {
 	m := mirrored(p)
-	return join(ellipsoid(m, vec{20, -56, -32}, vec{36, 37, 31}), ellipsoid(p, vec{0, -56, -28}, vec{18, 31, 31}), 6)
+	return join(ellipsoid(m, vec{20, -56, -32}, vec{36, 37, 31}), ellipsoid(p, vec{0, -54, -26}, vec{18, 32, 34}), 6)
 }
 
-// folia is the distance to the nearest fissure of the cerebellum.
-func (a *anatomy) folia(p vec) float64 {
-	y, z := p[1]+34, p[2]+28
+// folia is the distance to the nearest fissure of the cerebellum at a depth in
+// mm: every third runs deep, and none reaches the white matter in the middle.
+func (a *anatomy) folia(p vec, depth float64) float64 {
+	// Their planes turn about an axis that rises to either side.
+	y, z := p[1]+34, p[2]+27-0.3*math.Abs(p[0])
 	r := hypot(y, z)
-	angle := math.Atan2(z, -y) + 0.10*a.warpX.at(p)
-	const fissures = 15
-	cell := angle * fissures / math.Pi
-	return math.Abs(cell-math.Round(cell)) * math.Pi / fissures * max(r, 4)
+	const apart = math.Pi / 21
+	cell := (math.Atan2(z, -y) + 0.10*a.warpX.at(p)) / apart
+	near := 15 - r - 0.4*math.Abs(p[0])
+	fissure := func(every, deepest float64) float64 {
+		return hypot(math.Abs(cell-every*math.Round(cell/every))*apart*max(r, 4), max(depth-deepest, near, 0))
+	}
+	return min(fissure(1, 9), fissure(3, 20))
 }
 
 // ventriclesShape is the lateral and the third ventricle.
@@ -160,7 +174,8 @@ func (a *anatomy) deepShape(p vec) float64 {
 // outlineShape is the skin.
 func (a *anatomy) outlineShape(p vec, cavity float64) float64 {
 	m := mirrored(p)
-	scalp := cavity + 14.5
+	// Thicker over the crown and at the back of the head.
+	scalp := cavity + 12.6 + 1.6*a.warpY.at(vec{0.4 * p[0], 0.4 * p[1], 0.4 * p[2]})
 	if p[2] > 60 || cavity > 12 {
 		return scalp // far from the face
 	}
@@ -169,10 +184,10 @@ func (a *anatomy) outlineShape(p vec, cavity float64) float64 {
 	nostril := ellipsoid(m, vec{9, 103, -54}, vec{8, 9, 7})
 	lips := ellipsoid(p, vec{0, 95, -76}, vec{24, 9, 11})
 	neck := neckPipe.at(p)
-	brow := ellipsoid(m, vec{26, 84, -2}, vec{30, 12, 12})
-	ear := ellipsoid(m, vec{86, -16, -28}, vec{5, 15, 26})
+	brow := ellipsoid(m, vec{20, 83, -5}, vec{26, 9, 10})
+	ear := ellipsoid(vec{m[0] - 0.12*p[2], p[1], p[2]}, vec{86, -18, -22}, vec{5, 14, 24}) // leaning outward
 	d := join(scalp, face, 22)
-	d = join(join(d, nose, 8), join(nostril, lips, 4), 8)
+	d = join(join(d, nose, 16), join(nostril, lips, 4), 10)
 	d = join(join(d, brow, 10), neck, 24)
 	// The sockets are hollows beside the nose.
 	d = meet(d, -ellipsoid(m, vec{34, 102, -23}, vec{18, 16, 13}), 9)

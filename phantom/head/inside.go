@@ -14,12 +14,16 @@ func membranes(at *place, c *canvas) {
 func hemispheres(at *place, c *canvas) {
 	a := at.a
 	// Fluid over the hemispheres is thicker above than at the base.
-	surface := min(at.cavity()-1.2-0.8*min(max((at.p[2]+5)/25, 0), 1), -at.below()-1.2)
+	surface := min(at.cavity()-0.8-0.7*min(max((at.p[2]+5)/25, 0), 1)-0.6*a.atrophy, -at.below()-1.3)
 	if surface <= -c.edge {
 		return
 	}
-	gap, gapHalf := at.fissure(surface, c.slack)
-	sulcus := at.sulcus(surface, c.slack)
+	gap, gapHalf := at.midline(surface)
+	sylvian := at.sylvian(c.slack)
+	if sylvian < gap {
+		gap, gapHalf = sylvian, sylvianHalf
+	}
+	sulcus := at.sulcus(surface, sylvian, c.slack)
 	// Sulci open toward the surface, and the crowns between them are round.
 	open := opening * square(min(max(0, 1-(sulcus-c.slack)/openingReach), 1))
 	crown := c.steep(surface - open)
@@ -84,14 +88,11 @@ func tentorium(at *place, c *canvas) {
 
 // cerebellum paints its leaves.
 func cerebellum(at *place, c *canvas) {
-	surface := min(at.a.cerebellum.at(at.p), at.below()-1.6)
+	surface := min(at.a.cerebellum.at(at.p), at.below()-0.8)
 	if surface <= -c.edge {
 		return
 	}
-	fissure := at.a.folia(at.p)
-	if surface > 17 {
-		fissure = hypot(fissure, surface-17)
-	}
+	fissure := at.a.folia(at.p, surface-c.slack)
 	c.paint(cortex, surface)
 	c.sheet(csf, fissure, 0.35, surface)
 	c.within(whiteMatter, c.steep(min(surface, fissure-0.35)-1.9), cortex)
@@ -116,7 +117,7 @@ func veins(at *place, c *canvas) {
 	p, cavity := at.p, at.cavity()
 	// The superior sagittal one is a wedge under the vault.
 	c.paint(venousBlood, min(3.2-0.015*p[1]-0.55*cavity-at.m[0], cavity-0.3, max(p[2]-5, -60-p[1])))
-	transverse := min(3.4-math.Abs(p[2]+12+0.25*at.m[0]), 4.5-cavity, -44-p[1])
+	transverse := min(3-math.Abs(p[2]+12+0.25*at.m[0]), 3.8-cavity, -44-p[1])
 	c.paint(venousBlood, min(max(transverse, sigmoidPipe.near(at.m)), cavity-0.4))
 }
 

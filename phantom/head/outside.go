@@ -15,19 +15,22 @@ func temples(at *place, c *canvas) {
 }
 
 // muscles paints those of neck, face and tongue; seams of fat part their
-// bellies.
+// bellies, along the neck.
 func muscles(at *place, c *canvas) {
-	p := at.p
-	neck := min(at.skin()-5, -30-p[2]-0.4*p[1])
-	cheek := min(at.skin()-7, blob(at.m, vec{46, 34, -66}, vec{14, 24, 34}))
+	p, skin := at.p, at.skin()
+	neck := min(skin-5, -30-p[2]-0.4*p[1])
 	tongue := blob(p, vec{0, 54, -80}, vec{24, 30, 19})
-	if max(neck, cheek, tongue) <= -c.edge {
+	chew := min(skin-4, max(masseterPipe.near(at.m), pterygoidPipe.near(at.m), templePipe.near(at.m)))
+	mimic := min(1.1-math.Abs(skin-7), p[1]-30, -26-p[2], chew+20)
+	if max(neck, tongue, chew, mimic) <= -c.edge {
 		return
 	}
 	grain := at.a.marbling.at(p)
-	seam := 3*math.Abs(at.a.warpX.at(p)) - 0.3
-	c.paint(muscle, c.steep(min(max(min(neck, at.skin()-6-0.5*grain), cheek), seam)))
+	seam := c.steep(4*math.Abs(at.a.warpX.at(vec{1.3 * p[0], 1.3 * p[1], 0.3 * p[2]})) - 0.35)
+	c.paint(muscle, min(c.steep(min(neck, skin-6-0.5*grain)), seam))
+	c.paint(muscle, c.steep(chew-0.6*grain))
 	c.paint(muscle, min(tongue, c.steep(c.steep(2.2-grain))))
+	c.paint(muscle, mimic)
 }
 
 func neckVessels(at *place, c *canvas) {
@@ -38,9 +41,10 @@ func neckVessels(at *place, c *canvas) {
 // skull paints the vault with its diploe.
 func skull(at *place, c *canvas) {
 	p, cavity := at.p, at.cavity()
-	thick := 7.2 + 0.8*at.a.warpX.at(vec{p[0] / 2, p[1] / 2, p[2] / 2})
+	// Thin below the temporal lobes and the cerebellum.
+	thick := 2.4 + 4.4*min(max((p[2]+34)/26, 0), 1) + 0.9*at.a.warpX.at(vec{p[0] / 2, p[1] / 2, p[2] / 2})
 	c.paint(bone, min(cavity+thick, p[2]+62))
-	c.paint(marrow, min(cavity+thick-1.8, -2.0-cavity, p[2]+30))
+	c.paint(marrow, min(cavity+thick-1.7, -1.8-cavity, p[2]+30))
 }
 
 // skullBase paints clivus and petrous bones.
@@ -67,12 +71,12 @@ func jaws(at *place, c *canvas) {
 	jaw := jawPipe.near(at.m)
 	c.paint(bone, jaw)
 	c.paint(marrow, jaw-2.4)
-	palate := min(blob(at.p, vec{0, 56, -62}, vec{27, 36, 4.5}), at.p[1]-24)
+	palate := min(blob(at.p, vec{0, 56, -62}, vec{25, 34, 2.4}), at.p[1]-24)
 	c.paint(bone, max(palate, teethPipe.near(at.m)))
 	cheekbone := cheekbonePipe.near(at.m)
 	c.paint(bone, cheekbone)
 	c.paint(marrow, cheekbone-2.5)
-	c.paint(bone, blob(at.p, vec{0, 84, -10}, vec{26, 7, 10}))
+	c.paint(bone, blob(at.p, vec{0, 83, -4}, vec{32, 8.5, 17}))
 }
 
 // orbits paints the eyes with their muscles and the optic nerves.
@@ -111,10 +115,9 @@ func sinuses(at *place, c *canvas) {
 	}
 }
 
-// nose paints its cavity, the throat and the mouth.
+// nose paints its cavity and the throat.
 func nose(at *place, c *canvas) {
 	c.air(min(blob(at.p, vec{0, 62, -44}, vec{11, 34, 15}), at.m[0]-1.1))
 	c.paint(mucosa, max(turbinateLow.near(at.m), turbinateMid.near(at.m)))
 	c.air(throatPipe.near(at.p))
-	c.air(blob(at.p, vec{0, 62, -63}, vec{17, 22, 3.2}))
 }
