@@ -112,7 +112,7 @@ func (a *anatomy) posteriorFossaShape(p vec) float64 {
 	m := mirrored(p)
 	tent := join(ellipsoid(m, vec{16, -54, -33}, vec{39, 37, 26}), ellipsoid(p, vec{0, -50, -28}, vec{30, 34, 36}), 14)
 	// The roof falls to the sides and to the back.
-	tent = meet(tent, (7-p[2]-0.55*m[0]-0.25*max(0, -40-p[1]))/1.17, 5)
+	tent = meet(tent, (7-p[2]-0.55*m[0]-0.25*max(0, -40-p[1]))/1.17, 14)
 	return join(tent, ellipsoid(p, vec{0, -20, -26}, vec{20, 17, 27}), 8)
 }
 
@@ -139,7 +139,7 @@ func (a *anatomy) folia(p vec, depth float64) float64 {
 	r := hypot(y, z)
 	const apart = math.Pi / 21
 	cell := (math.Atan2(z, -y) + 0.10*a.warpX.at(p)) / apart
-	near := 15 - r - 0.4*math.Abs(p[0])
+	near := 15 - hypot(r, 0.5*p[0])
 	fissure := func(every, deepest float64) float64 {
 		return hypot(math.Abs(cell-every*math.Round(cell/every))*apart*max(r, 4), max(depth-deepest, near, 0))
 	}
@@ -184,7 +184,7 @@ func (a *anatomy) outlineShape(p vec, cavity float64) float64 {
 	nostril := ellipsoid(m, vec{9, 103, -54}, vec{8, 9, 7})
 	lips := ellipsoid(p, vec{0, 95, -76}, vec{24, 9, 11})
 	neck := neckPipe.at(p)
-	brow := ellipsoid(m, vec{20, 83, -5}, vec{26, 9, 10})
+	brow := ellipsoid(m, vec{18, 82, -8}, vec{26, 8, 9})
 	ear := ellipsoid(vec{m[0] - 0.12*p[2], p[1], p[2]}, vec{86, -18, -22}, vec{5, 14, 24}) // leaning outward
 	d := join(scalp, face, 22)
 	d = join(join(d, nose, 16), join(nostril, lips, 4), 10)

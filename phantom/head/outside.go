@@ -76,7 +76,7 @@ func jaws(at *place, c *canvas) {
 	cheekbone := cheekbonePipe.near(at.m)
 	c.paint(bone, cheekbone)
 	c.paint(marrow, cheekbone-2.5)
-	c.paint(bone, blob(at.p, vec{0, 83, -4}, vec{32, 8.5, 17}))
+	c.paint(bone, blob(at.p, vec{0, 80, -3}, vec{30, 8.5, 16}))
 }
 
 // orbits paints the eyes with their muscles and the optic nerves.
@@ -107,7 +107,7 @@ func mastoids(at *place, c *canvas) {
 func sinuses(at *place, c *canvas) {
 	m := at.m
 	c.air(min(m[0]-0.6, max( // parted by a septum
-		blob(m, vec{13, 84, 2}, vec{12, 5.5, 11}),
+		blob(m, vec{12, 81, 1}, vec{10, 4.8, 9}),
 		blob(m, vec{27, 54, -46}, vec{13.5, 16, 14}),
 		blob(m, vec{8, 24, -30}, vec{9, 11, 9}))))
 	if cells := blob(m, vec{7, 56, -24}, vec{7, 20, 9}); cells > -c.edge && !c.unsure() {
