@@ -236,18 +236,23 @@ func waits(s synth.Scan) []float64 {
 
 // perTR returns how many slices fit into one TR. Prepared sequences prepare a
 // block of slices one after the other and then read them in the same order, so
-// a block must fit into each delay and into what remains of TR.
+// a block must fit into each delay; as many blocks follow one another as TR
+// holds. Of all block sizes the best is taken.
 func (x *Prescription) perTR(s synth.Scan, h Hardware) int {
 	busy := x.busy(s, h)
-	room, rest := math.Inf(1), s.TR
-	for _, w := range waits(s) {
-		room = math.Min(room, w)
-		rest -= w
+	most, wait := 1, 0.0
+	for i, w := range waits(s) {
+		n := int(math.Floor(w/busy + 1e-9))
+		if i == 0 || n < most {
+			most = n
+		}
+		wait += w
 	}
-	room = math.Min(room, rest)
-	n := int(math.Floor(room/busy + 1e-9))
-	if n < 1 && rest >= busy-slack {
-		n = 1 // alone it need not share its delays
+	best := 0
+	// A slice whose readout is longer than its delay still runs alone.
+	for m := 1; m <= max(most, 1); m++ {
+		blocks := int(math.Floor(s.TR/(wait+float64(m)*busy) + 1e-9))
+		best = max(best, m*blocks)
 	}
-	return n
+	return best
 }

@@ -223,6 +223,16 @@ func TestScanTime(t *testing.T) {
 			s.Sequence, s.TR, s.TE = synth.FastSpinEcho, 4, 0.08
 			s.Train = synth.Train{Length: 16, Spacing: 0.01}
 		}, 8 * 4, 1},
+		// A slice takes 94 ms after a delay of 170 ms: 15 one after the other in 4 s.
+		{"short inversion", func(s *synth.Scan) {
+			s.Sequence, s.Readout, s.TR, s.TI, s.TE = synth.InversionRecovery, synth.ReadFastSpinEcho, 4, 0.17, 0.04
+			s.Train = synth.Train{Length: 8, Spacing: 0.01}
+		}, 2 * 16 * 4, 2},
+		// Ten slices of 174 ms share a delay of 2.2 s: two such blocks in 9 s.
+		{"long inversion", func(s *synth.Scan) {
+			s.Sequence, s.Readout, s.TR, s.TI, s.TE = synth.InversionRecovery, synth.ReadFastSpinEcho, 9, 2.2, 0.08
+			s.Train = synth.Train{Length: 16, Spacing: 0.01}
+		}, 8 * 9, 1},
 		{"3D", func(s *synth.Scan) {
 			s.Sequence, s.TR, s.TE, s.Flip = synth.SpoiledGRE, 0.02, 0.005, 0.3
 			s.Geometry.Volume3D, s.Geometry.Slices, s.Geometry.Gap = true, 64, 0
