@@ -40,6 +40,7 @@ func newBend(seed uint64) *bend {
 		}
 		w.phase = 2 * math.Pi * r.Float64()
 	}
+	torque := 2.4 * (0.7 + 0.6*r.Float64())
 	b := &bend{}
 	for a := range 3 {
 		b.lo[a] = 1.05 * low[a]
@@ -48,7 +49,9 @@ func newBend(seed uint64) *bend {
 	b.v = make([][3]float32, b.size[0]*b.size[1]*b.size[2])
 	for n := range b.v {
 		p := vec{b.lo[0] + bendStep*float64(n%b.size[0]), b.lo[1] + bendStep*float64(n/b.size[0]%b.size[1]), b.lo[2] + bendStep*float64(n/(b.size[0]*b.size[1]))}
-		var sum vec
+		// Above the face the left hemisphere reaches across the midline behind, the
+		// right one in front.
+		sum := vec{torque * math.Tanh((p[1]+15)/22) * min(max((p[2]+30)/25, 0), 1), 0, 0}
 		for _, w := range waves {
 			s := math.Sin(float64(w.k[0]*p[0]) + float64(w.k[1]*p[1]) + float64(w.k[2]*p[2]) + w.phase)
 			for a := range 3 {

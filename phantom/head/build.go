@@ -35,8 +35,8 @@ var (
 	high = vec{96, 124, 108}
 )
 
-// maxVoxels bounds the size of a head: about 10 bytes are needed for each.
-const maxVoxels = 120 << 20
+// maxVoxels bounds the size of a head: about 4 bytes are needed for each.
+const maxVoxels = 200 << 20
 
 // Build makes the head of a spec with the tissues of a table. The same spec
 // gives the same bytes on any number of cores.
@@ -58,7 +58,7 @@ func Build(ctx context.Context, spec Spec, table *phantom.Table, progress func(d
 	}
 	if voxels > maxVoxels {
 		return nil, fmt.Errorf("head: %.0f million voxels would need about %.1f GB: want at most %d million; use larger voxels",
-			voxels/1e6, voxels*10/1e9, maxVoxels>>20)
+			voxels/1e6, voxels*4/1e9, maxVoxels>>20)
 	}
 	if !(spec.Atrophy >= 0 && spec.Atrophy <= 1) {
 		return nil, fmt.Errorf("head: atrophy = %g: want 0..1", spec.Atrophy)

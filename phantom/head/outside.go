@@ -117,7 +117,10 @@ func sinuses(at *place, c *canvas) {
 
 // nose paints its cavity and the throat.
 func nose(at *place, c *canvas) {
-	c.air(min(blob(at.p, vec{0, 62, -44}, vec{11, 34, 15}), at.m[0]-1.1))
+	cavity := blob(at.p, vec{0, 62, -44}, vec{11, 34, 15})
+	c.paint(mucosa, cavity)
+	c.sheet(bone, at.m[0], 0.5, cavity) // the septum
+	c.air(min(cavity, at.m[0]-1.4))
 	c.paint(mucosa, max(turbinateLow.near(at.m), turbinateMid.near(at.m)))
 	c.air(throatPipe.near(at.p))
 }
