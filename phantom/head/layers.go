@@ -1,9 +1,6 @@
 package head
 
-import (
-	"math"
-	"math/bits"
-)
+import "math/bits"
 
 // place is a point to be painted. What several layers need is worked out when
 // the first of them asks for it.
@@ -67,7 +64,7 @@ var layers = []func(at *place, c *canvas){
 }
 
 // everyLayer is the set of all layers; a set has one bit for each.
-const everyLayer = math.MaxUint32
+var everyLayer = uint32(1)<<len(layers) - 1
 
 // brush paints points.
 type brush struct {
@@ -79,16 +76,13 @@ func newBrush(a *anatomy, edge float64) *brush {
 	return &brush{place{a: a}, canvas{edge: edge}}
 }
 
-// paint paints the layers of a set at a point of the unbent head. It returns the set of those that changed something and were not covered whole
-// by a later one.
+// paint paints the layers of a set at a point of the unbent head. It returns the
+// set of those that changed something and were not covered whole by a later one.
 func (b *brush) paint(p vec, set uint32) (found uint32) {
 	b.only = numTissues
 	b.moveTo(p)
 	for ; set != 0; set &= set - 1 {
 		i := bits.TrailingZeros32(set)
-		if i >= len(layers) {
-			break
-		}
 		b.touched, b.whole = false, false
 		layers[i](&b.place, &b.canvas)
 		if b.whole {
