@@ -174,8 +174,8 @@ func (a *anatomy) deepShape(p vec) float64 {
 // outlineShape is the skin.
 func (a *anatomy) outlineShape(p vec, cavity float64) float64 {
 	m := mirrored(p)
-	// Thicker over the crown and at the back of the head.
-	scalp := cavity + 12.6 + 1.6*a.warpY.at(vec{0.4 * p[0], 0.4 * p[1], 0.4 * p[2]})
+	// Of uneven thickness.
+	scalp := cavity + 12.6 + 0.9*a.warpY.at(vec{0.4 * p[0], 0.4 * p[1], 0.4 * p[2]})
 	if p[2] > 60 || cavity > 12 {
 		return scalp // far from the face
 	}
