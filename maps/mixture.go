@@ -43,8 +43,9 @@ type Mixture struct {
 // mixedSlice lists the mixed voxels of a slice in the order of their labels.
 type mixedSlice struct {
 	parts []Part
-	first []uint32 // first[n] is the start of mixed voxel n in parts, one more at the end
-	row   []uint32 // row[j] is the number of mixed voxels in rows before j
+	first []uint32                  // first[n] is the start of mixed voxel n in parts, one more at the end
+	row   []uint32                  // row[j] is the number of mixed voxels in rows before j
+	holds [MaxTissues/64 + 1]uint64 // a bit for each tissue that occurs in the slice
 }
 
 // NewMixture returns a mixture of nothing but void.
@@ -88,6 +89,7 @@ func (m *Mixture) Fill(k int, parts func(i, j int, dst []Part) []Part) (err erro
 					return fmt.Errorf("mixture: voxel (%d,%d,%d): tissue %d: want 0..%d", i, j, k, p.Tissue, len(m.Tissues)-1)
 				}
 				sum += int(p.Fraction)
+				s.holds[p.Tissue/64] |= 1 << (p.Tissue % 64)
 			}
 			switch {
 			case sum > Whole:
@@ -191,6 +193,11 @@ func (m *Mixture) Weigh(k int, weight []float64, dst []float32) {
 		dst[v] = float32(sum)
 		next++
 	}
+}
+
+// Holds says whether a tissue occurs in slice k.
+func (m *Mixture) Holds(k, tissue int) bool {
+	return m.slices[k].holds[tissue/64]>>(tissue%64)&1 != 0
 }
 
 // Fractions sets dst (one slice, x fastest) to the fraction 0..1 of one tissue

@@ -91,6 +91,9 @@ func TestMixture(t *testing.T) {
 			all := make([]float64, n)
 			for tissue := range 3 {
 				m.Fractions(k, tissue, share)
+				if got, want := m.Holds(k, tissue), slices.Max(share) > 0; got != want {
+					t.Fatalf("slice %d holds %s: %v: want %v", k, threeTissues[tissue].Name, got, want)
+				}
 				for v, x := range share {
 					if x < 0 || x > 1 {
 						t.Fatalf("share %g", x)

@@ -598,3 +598,34 @@ func ExampleRead() {
 	fmt.Println(img.Grid.Size, img.Grid.Spacing, img.Data)
 	// Output: [2 2 1] [1 1 5] [0 0 0 1.5]
 }
+
+// Zeros writes what Write does, with an intercept too.
+func TestZeros(t *testing.T) {
+	g := maps.NewGrid([3]int{5, 4, 3}, [3]float64{1, 1, 1})
+	for _, opt := range []Options{{}, {Type: Uint16, Slope: 0.5}, {Type: Int16, Slope: 2, Inter: -10}, {Type: Float64, Gzip: true}} {
+		var got, want bytes.Buffer
+		for _, b := range []*bytes.Buffer{&got, &want} {
+			w, err := NewWriter(b, g, opt)
+			if err != nil {
+				t.Fatal(err)
+			}
+			if b == &got {
+				err = w.Zeros(g.Len() - 1)
+			} else {
+				err = w.Write(make([]float32, g.Len()-1))
+			}
+			if err := errors.Join(err, w.Write([]float32{4})); err != nil {
+				t.Fatal(err)
+			}
+			if err := w.Zeros(1); err == nil {
+				t.Error("more zeros than the grid holds were taken")
+			}
+			if err := w.Close(); err != nil {
+				t.Fatal(err)
+			}
+		}
+		if !bytes.Equal(got.Bytes(), want.Bytes()) {
+			t.Errorf("%+v: zeros differ", opt)
+		}
+	}
+}

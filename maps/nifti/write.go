@@ -77,8 +77,9 @@ func NewWriter(w io.Writer, g maps.Grid, opt Options) (*Writer, error) {
 		out.order = binary.BigEndian
 	}
 	if opt.Gzip {
-		// No name and no time, so that equal images are equal files.
-		out.zip, _ = gzip.NewWriterLevel(w, gzip.DefaultCompression)
+		// No name and no time, so that equal images are equal files. Better levels
+		// save a twentieth of the size and cost most of the time.
+		out.zip, _ = gzip.NewWriterLevel(w, gzip.BestSpeed)
 		w = out.zip
 	}
 	out.buf = bufio.NewWriterSize(w, 1<<16)
@@ -114,6 +115,24 @@ func (w *Writer) Write(values []float32) error {
 			return err
 		}
 		values = values[n:]
+	}
+	return nil
+}
+
+// Zeros appends n values of 0, faster than Write.
+func (w *Writer) Zeros(n int) error {
+	if w.opt.Inter != 0 {
+		return w.Write(make([]float32, n))
+	}
+	if n > w.left {
+		return fmt.Errorf("nifti: %d values more than the grid holds", n-w.left)
+	}
+	w.left -= n
+	const batch = 1 << 15
+	for n *= w.opt.Type.size(); n > 0; n -= batch {
+		if _, err := w.buf.Write(make([]byte, min(n, batch))); err != nil {
+			return err
+		}
 	}
 	return nil
 }

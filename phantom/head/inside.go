@@ -79,7 +79,7 @@ func cisterns(at *place, c *canvas) {
 
 // falx paints the sickle between the hemispheres, in whose root the sinus lies.
 func falx(at *place, c *canvas) {
-	c.sheet(dura, at.m[0], 0.4, min(at.cavity()-5, falxDepth(at.p)-at.cavity(), -at.core()-5, at.p[2]+8))
+	c.sheet(dura, at.m[0], 0.3, min(at.cavity()-5, falxDepth(at.p)-at.cavity(), -at.core()-5, at.p[2]+8))
 }
 
 func tentorium(at *place, c *canvas) {

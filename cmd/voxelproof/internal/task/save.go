@@ -138,6 +138,7 @@ type image struct {
 	file  string
 	opt   nifti.Options
 	slice func(k int, dst []float32)
+	holds func(k int) bool // whether a slice holds anything; nil = all do
 }
 
 // saveImages writes images on one grid, several at a time.
@@ -157,8 +158,13 @@ func saveImages(ctx context.Context, f *export.Folder, g maps.Grid, images []ima
 					if err := ctx.Err(); err != nil {
 						return err
 					}
-					m.slice(k, slice)
-					if err := out.Write(slice); err != nil {
+					if m.holds != nil && !m.holds(k) {
+						err = out.Zeros(len(slice))
+					} else {
+						m.slice(k, slice)
+						err = out.Write(slice)
+					}
+					if err != nil {
 						return err
 					}
 				}
@@ -190,6 +196,7 @@ func saveMixture(ctx context.Context, f *export.Folder, l *Loaded, progress func
 			// 16 bits hold a fraction exactly.
 			opt:   nifti.Options{Type: nifti.Uint16, Slope: 1.0 / maps.Whole, Gzip: true, Descrip: "share of " + clip(tissue.Name, 60)},
 			slice: func(k int, dst []float32) { m.Fractions(k, t, dst) },
+			holds: func(k int) bool { return m.Holds(k, t) },
 		})
 	}
 	if !slices.Contains(names, "fat") {
@@ -226,7 +233,10 @@ func saveMixture(ctx context.Context, f *export.Folder, l *Loaded, progress func
 	}
 	if len(l.Findings) > 0 && l.labels != nil {
 		v := l.labels()
-		images = append(images, image{"findings.nii.gz", nifti.Options{Type: nifti.Uint8, Gzip: true, Descrip: "findings: n-th row of findings.tsv"}, func(k int, dst []float32) { copy(dst, v.Slice(k)) }})
+		images = append(images, image{
+			file: "findings.nii.gz", opt: nifti.Options{Type: nifti.Uint8, Gzip: true, Descrip: "findings: n-th row of findings.tsv"},
+			slice: func(k int, dst []float32) { copy(dst, v.Slice(k)) },
+		})
 	}
 	dominant, err := dominantImages(f, l)
 	if err != nil {
@@ -249,8 +259,8 @@ func dominantImages(f *export.Folder, l *Loaded) ([]image, error) {
 		}
 	}
 	images := []image{{
-		"sub-synthetic_dseg.nii.gz", nifti.Options{Type: nifti.Uint8, Gzip: true, Descrip: "dominant tissue"},
-		of(func(l uint8) float32 { return float32(l) }),
+		file: "sub-synthetic_dseg.nii.gz", opt: nifti.Options{Type: nifti.Uint8, Gzip: true, Descrip: "dominant tissue"},
+		slice: of(func(l uint8) float32 { return float32(l) }),
 	}}
 	for q, value := range map[maps.Quantity]func(maps.Tissue) float64{
 		maps.T1: func(t maps.Tissue) float64 { return mostly(t).T1 }, maps.T2: func(t maps.Tissue) float64 { return mostly(t).T2 },
@@ -261,7 +271,7 @@ func dominantImages(f *export.Folder, l *Loaded) ([]image, error) {
 		for i, t := range m.Tissues {
 			per[i+1] = float32(value(t))
 		}
-		images = append(images, image{mapStem(q) + ".nii.gz", mapOptions(q), of(func(l uint8) float32 { return per[l] })})
+		images = append(images, image{file: mapStem(q) + ".nii.gz", opt: mapOptions(q), slice: of(func(l uint8) float32 { return per[l] })})
 		if err := saveSidecar(f, q, l.Set); err != nil {
 			return nil, err
 		}

@@ -130,7 +130,7 @@ scans:
 var golden = map[string]string{
 	"1": "9e9c58605274e0ec73061983e19c3dfaafdb59d717a0db66c9d6a72bee8c130e",
 	"2": "d5c7f31573fdfa3f8ab769b90c7b17460bfab75bc65ab611962a07ee9fce931b",
-	"3": "a00339569003123c065674a80efcab114015627df8fa1ea6353d4b796cb40e83",
+	"3": "f79dc6278492ad7b7fbe4a0a7fe93b182706960dbeb6393034ed8b3adbb4cdb0",
 }
 
 func TestGoldenFiles(t *testing.T) {
